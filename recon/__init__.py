@@ -1,0 +1,1 @@
+"""Reconstruction of undersampled k-space, comparison with a reference, studies and reports."""

@@ -1,0 +1,82 @@
+"""What a scan acquired: the input of every reconstruction method."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from .. import InputError
+
+
+@dataclass(frozen=True)
+class Acquired:
+    """Undersampled k-space of one coil or several.
+
+    Parameters
+    ----------
+    kspace : complex array ``(coil, x, y, z)``
+        Centred k-space on all three axes (an axis of length 1 is its own transform); what the mask leaves
+        out is not read.
+    mask : bool array, broadcastable to ``(x, y, z)``
+        The sampled points; an axis of length 1 is sampled fully.
+    maps : complex array ``(coil, x, y, z)``, optional
+        Coil sensitivities; needed with more than one coil.
+    sigma : float, optional
+        Standard deviation of the real (and of the imaginary) part of the noise in k-space.
+
+    Raises
+    ------
+    InputError
+        Shapes that do not fit, an empty mask, NaN or infinite values, sigma below zero, several coils without maps.
+
+    Examples
+    --------
+    >>> data = Acquired(np.ones((1, 4, 4, 1), np.complex64), np.ones((1, 4, 1), bool))
+    >>> data.shape, data.dtype, data.acceleration
+    ((4, 4, 1), dtype('complex64'), 1.0)
+    """
+
+    kspace: np.ndarray
+    mask: np.ndarray
+    maps: np.ndarray | None = None
+    sigma: float | None = None
+
+    def __post_init__(self):
+        if self.kspace.ndim != 4:
+            raise InputError(f"k-space has shape {self.kspace.shape}, expected (coil, x, y, z)")
+        if self.mask.ndim != 3 or any(m not in (1, n) for m, n in zip(self.mask.shape, self.shape, strict=True)):
+            raise InputError(f"the mask has shape {self.mask.shape}, which does not fit k-space of {self.shape}")
+        if not self.mask.any():
+            raise InputError("the mask is empty: no sample is taken")
+        if not np.isfinite(self.kspace).all():
+            raise InputError("k-space holds NaN or infinite values")
+        if self.maps is None:
+            if len(self.kspace) > 1:
+                raise InputError(
+                    f"k-space has {len(self.kspace)} coils but no coil maps are given; give one map for each coil"
+                )
+        elif self.maps.shape != self.kspace.shape:
+            raise InputError(f"coil maps have shape {self.maps.shape}, expected that of k-space, {self.kspace.shape}")
+        elif not np.isfinite(self.maps).all():
+            raise InputError("the coil maps hold NaN or infinite values")
+        elif not self.maps.any():
+            raise InputError("the coil maps are zero everywhere")
+        if self.sigma is not None and not (np.isfinite(self.sigma) and self.sigma >= 0):
+            raise InputError(f"sigma is {self.sigma}, expected a number of at least 0")
+
+    @property
+    def shape(self) -> tuple[int, int, int]:
+        """Shape of the image."""
+        x, y, z = self.kspace.shape[1:]
+        return x, y, z
+
+    @property
+    def dtype(self) -> np.dtype:
+        """complex128 when k-space is given in double precision, otherwise complex64."""
+        return np.dtype(np.complex128 if self.kspace.dtype in (np.complex128, np.float64) else np.complex64)
+
+    @property
+    def acceleration(self) -> float:
+        """Points of the grid over samples taken."""
+        return self.mask.size / int(self.mask.sum())

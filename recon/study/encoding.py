@@ -1,0 +1,78 @@
+"""The phase-encode grid of a scan, and a mask on it as a mask of k-space."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from ... import InputError
+
+Shape = tuple[int, int, int]
+
+
+def phase_encode_axes(phase_encode: str | None, pattern_axes: int, shape: Shape) -> str:
+    """Return the phase-encode axes of a pattern, the usual ones when none are asked for.
+
+    Parameters
+    ----------
+    phase_encode : str or None
+        ``"y"``, ``"yz"``, ...
+    pattern_axes : int
+        1 for patterns of lines, 2 for patterns of points.
+    shape : tuple of 3 int
+        Shape of the image.
+
+    Raises
+    ------
+    InputError
+        The number of axes does not fit the pattern, or an axis has one point.
+
+    Examples
+    --------
+    >>> phase_encode_axes(None, 1, (256, 256, 1)), phase_encode_axes(None, 2, (256, 256, 1))
+    ('y', 'xy')
+    >>> phase_encode_axes(None, 2, (128, 128, 64)), phase_encode_axes("xz", 2, (128, 128, 64))
+    ('yz', 'xz')
+    """
+    if phase_encode is None:
+        usual = {1: "y", 2: "yz" if shape[2] > 1 else "xy"}
+        return usual[pattern_axes]
+    if len(phase_encode) != pattern_axes:
+        expected = {1: "one axis, for example y", 2: "two axes, for example yz"}[pattern_axes]
+        raise InputError(f'"{phase_encode}" does not fit the pattern; it undersamples {expected}')
+    for axis, length in zip("xyz", shape, strict=True):
+        if axis in phase_encode and length == 1:
+            raise InputError(f'"{phase_encode}" encodes {axis}, along which the reference has one point')
+    return phase_encode
+
+
+def grid_shape(phase_encode: str, shape: Shape) -> tuple[int, ...]:
+    """Return the shape of the phase-encode grid.
+
+    Examples
+    --------
+    >>> grid_shape("yz", (128, 96, 64))
+    (96, 64)
+    """
+    return tuple(shape["xyz".index(axis)] for axis in phase_encode)
+
+
+def on_kspace(mask: np.ndarray, phase_encode: str) -> np.ndarray:
+    """Give the mask of a phase-encode grid the three axes of k-space; a fully sampled axis has length 1.
+
+    Parameters
+    ----------
+    mask : bool array
+        Of the grid's shape.
+    phase_encode : str
+
+    Returns
+    -------
+    bool array, broadcastable to (x, y, z)
+
+    Examples
+    --------
+    >>> on_kspace(np.ones((96, 64), bool), "yz").shape, on_kspace(np.ones(96, bool), "y").shape
+    ((1, 96, 64), (1, 96, 1))
+    """
+    lengths = dict(zip(phase_encode, mask.shape, strict=True))
+    return mask.reshape([lengths.get(axis, 1) for axis in "xyz"])
