@@ -105,7 +105,9 @@ class Phantom:
         4.0
         """
         nx, ny = _checked_matrix(matrix)
-        fov_x, fov_y = _checked_field_of_view(field_of_view_mm or self.field_of_view_mm)
+        if field_of_view_mm is None:
+            field_of_view_mm = self.field_of_view_mm
+        fov_x, fov_y = _checked_field_of_view(field_of_view_mm)
         scale = np.sqrt(nx * ny) / (fov_x * fov_y)
         if array is None:
             transform = self._transform(_frequencies(nx) / fov_x, _frequencies(ny) / fov_y)

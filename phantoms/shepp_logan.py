@@ -1,8 +1,8 @@
 """The Shepp-Logan head, with the values of 1974 and with the higher contrast of Toft.
 
 The head is defined on the square [-1, 1]^2; the square is scaled to the field of view. At the standard 240 mm
-one unit is 120 mm and the skull measures 166 mm x 221 mm. The nose points up: y grows to the front, and x to
-the right.
+one unit is 120 mm and the skull measures 166 mm x 221 mm. Drawn with x to the right and y upwards, as in
+the paper.
 
 References
 ----------

@@ -9,6 +9,17 @@ import numpy as np
 from .. import InputError
 
 
+def fits(mask: np.ndarray, shape: tuple[int, int, int]) -> bool:
+    """Tell whether a mask broadcasts to an image's shape.
+
+    Examples
+    --------
+    >>> fits(np.ones((1, 8, 1), bool), (6, 8, 2)), fits(np.ones((1, 7, 1), bool), (6, 8, 2))
+    (True, False)
+    """
+    return mask.ndim == 3 and all(m in (1, n) for m, n in zip(mask.shape, shape, strict=True))
+
+
 @dataclass(frozen=True)
 class Acquired:
     """Undersampled k-space of one coil or several.
@@ -28,7 +39,8 @@ class Acquired:
     Raises
     ------
     InputError
-        Shapes that do not fit, an empty mask, NaN or infinite values, sigma below zero, several coils without maps.
+        Shapes that do not fit, an empty mask, NaN or infinite values, sigma below zero, or several coils
+        without maps.
 
     Examples
     --------
@@ -45,8 +57,12 @@ class Acquired:
     def __post_init__(self):
         if self.kspace.ndim != 4:
             raise InputError(f"k-space has shape {self.kspace.shape}, expected (coil, x, y, z)")
-        if self.mask.ndim != 3 or any(m not in (1, n) for m, n in zip(self.mask.shape, self.shape, strict=True)):
-            raise InputError(f"the mask has shape {self.mask.shape}, which does not fit k-space of {self.shape}")
+        if self.mask.ndim != 3 or any(
+            m not in (1, n) for m, n in zip(self.mask.shape, self.shape, strict=True)
+        ):
+            raise InputError(
+                f"the mask has shape {self.mask.shape}, which does not fit k-space of {self.shape}"
+            )
         if not self.mask.any():
             raise InputError("the mask is empty: no sample is taken")
         if not np.isfinite(self.kspace).all():
@@ -57,7 +73,9 @@ class Acquired:
                     f"k-space has {len(self.kspace)} coils but no coil maps are given; give one map for each coil"
                 )
         elif self.maps.shape != self.kspace.shape:
-            raise InputError(f"coil maps have shape {self.maps.shape}, expected that of k-space, {self.kspace.shape}")
+            raise InputError(
+                f"coil maps have shape {self.maps.shape}, expected that of k-space, {self.kspace.shape}"
+            )
         elif not np.isfinite(self.maps).all():
             raise InputError("the coil maps hold NaN or infinite values")
         elif not self.maps.any():
@@ -80,3 +98,20 @@ class Acquired:
     def acceleration(self) -> float:
         """Points of the grid over samples taken."""
         return self.mask.size / int(self.mask.sum())
+
+
+def without_full_axes(mask: np.ndarray) -> np.ndarray:
+    """Reduce to length 1 each axis along which a mask does not change: it is sampled fully, or not encoded.
+
+    Examples
+    --------
+    >>> lines = np.zeros((6, 8, 1), bool)
+    >>> lines[:, ::2] = True
+    >>> without_full_axes(lines).shape
+    (1, 8, 1)
+    """
+    for axis in range(mask.ndim):
+        first = mask.take([0], axis)
+        if np.array_equal(np.broadcast_to(first, mask.shape), mask):
+            mask = first
+    return mask

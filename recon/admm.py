@@ -8,6 +8,7 @@ import numpy as np
 from numba import njit
 
 from .fista import as_lines
+from .precision import real_type
 from .problem import Callback, Problem, relative
 
 
@@ -47,8 +48,8 @@ class Admm:
     0.3
     """
 
-    iterations: int = 500
-    tolerance: float = 1e-4
+    iterations: int = 1000
+    tolerance: float = 1e-5
     rho: float = 0.3
     inner: int = 4
 
@@ -57,6 +58,7 @@ class Admm:
     ) -> tuple[np.ndarray, bool, str, int, float]:
         """Run the iteration; see `Solver`."""
         sensing, penalty = problem.sensing, problem.penalty
+        real = real_type(x.dtype)
         W = penalty.transform
         rho = self.rho * sensing.bound
         v, d, w = W.forward(x), np.zeros_like(x), x.copy()
@@ -83,7 +85,7 @@ class Admm:
                 balance_at += balance_at // 2
                 factor = 2.0 if primal > 3 * dual else 0.5 if dual > 3 * primal else 1.0
                 rho *= factor
-                d *= x.real.dtype.type(1 / factor)
+                d *= real(1 / factor)
             np.subtract(v, d, out=Wx)
             W.inverse(Wx, w)
             stop = callback is not None and bool(callback(k, W.inverse(v)))
@@ -112,7 +114,7 @@ class _ConjugateGradients:
 
     def __call__(self, problem: Problem, w: np.ndarray, rho: float, x: np.ndarray) -> None:
         r, p, q = self._r, self._p, self._q
-        rho = x.real.dtype.type(rho)
+        rho = real_type(x.dtype)(rho)
         problem.sensing.normal(x, q)
         np.subtract(self._backprojected, q, out=r)
         r += rho * (w - x)

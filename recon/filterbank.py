@@ -29,8 +29,17 @@ _FAST = {"contract", "reassoc", "nsz"}
 
 @njit(nogil=True, cache=True, fastmath=_FAST)
 def _fir8(out, at, s, width, o0, o1, o2, o3, o4, o5, o6, o7, c, t):
-    """Write (``t == 0``) or add to ``out[at:at + width]`` eight taps from ``c[t]`` on, of eight streams of `s`."""
-    c0, c1, c2, c3, c4, c5, c6, c7 = c[t], c[t + 1], c[t + 2], c[t + 3], c[t + 4], c[t + 5], c[t + 6], c[t + 7]
+    """Write (``t == 0``) or add to ``out[at:at + width]`` the taps ``c[t:t + 8]`` of eight streams of `s`."""
+    c0, c1, c2, c3, c4, c5, c6, c7 = (
+        c[t],
+        c[t + 1],
+        c[t + 2],
+        c[t + 3],
+        c[t + 4],
+        c[t + 5],
+        c[t + 6],
+        c[t + 7],
+    )
     if t == 0:
         for j in range(width):
             out[at + j] = (
@@ -200,7 +209,9 @@ def synthesise_rows(start, stop, src, dst, rows, line, outer, n, even, odd, shif
             o2 = o0 - uintp(reals)
             o4 = o2 - uintp(reals)
             o6 = o4 - uintp(reals)
-            _fir8(out, uintp(0), streams, w, o0, high + o0, o2, high + o2, o4, high + o4, o6, high + o6, even, t)
+            _fir8(
+                out, uintp(0), streams, w, o0, high + o0, o2, high + o2, o4, high + o4, o6, high + o6, even, t
+            )
             _fir8(out, w, streams, w, o0, high + o0, o2, high + o2, o4, high + o4, o6, high + o6, odd, t)
         _merge(phases, uintp(half), merged)
         _copy(dst, uintp(at + first), merged, uintp(0), uintp(m - first))

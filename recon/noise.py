@@ -11,7 +11,7 @@ SMALLEST_BORDER = 64
 
 
 def estimate_sigma(data: Acquired) -> float:
-    """Standard deviation of the real (and of the imaginary) part of the noise, from the k-space border.
+    """Estimate the standard deviation of the real part of the noise from the k-space border.
 
     The samples farthest from the centre of k-space (the outer 5%, 64 at least) hold little signal, so their
     squared magnitude is exponentially distributed with median ``2 ln(2) sigma^2``; the median tolerates the

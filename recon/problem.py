@@ -45,7 +45,7 @@ class Problem:
         """
         step = self.sensing.descend(x, self.encoded, np.empty_like(x))
         self.penalty.prox(step, 1 / self.sensing.bound, step)
-        return relative(np.linalg.norm(x - step), np.linalg.norm(x))
+        return relative(float(np.linalg.norm(x - step)), float(np.linalg.norm(x)))
 
 
 def relative(part: float, whole: float) -> float:
@@ -129,6 +129,4 @@ def solve(
     """
     x = problem.start() if start is None else np.array(start, problem.sensing.dtype)
     x, converged, stopped, iterations, change = solver.minimise(problem, x, callback)
-    return Solution(
-        x, converged, stopped, iterations, change, problem.optimality(x), problem.objective(x)
-    )
+    return Solution(x, converged, stopped, iterations, change, problem.optimality(x), problem.objective(x))

@@ -7,7 +7,9 @@ import scipy.fft
 from numba import njit
 
 from .. import InputError
+from .acquired import fits
 from .fourier import to_image, to_kspace
+from .precision import real_type
 from .team import Team
 
 _FAST = {"contract", "reassoc", "nsz"}
@@ -70,7 +72,8 @@ class Sensing:
         self.dtype = np.dtype(dtype)
         self.mask = np.asarray(mask, bool)
         self.team = team or Team()
-        if self.mask.ndim != 3 or any(m not in (1, n) for m, n in zip(self.mask.shape, shape, strict=True)):
+        self._real = real_type(dtype)
+        if not fits(self.mask, shape):
             raise InputError(f"the mask has shape {self.mask.shape}, which does not fit an image of {shape}")
         if not self.mask.any():
             raise InputError("the mask is empty: no sample is taken")
@@ -79,7 +82,9 @@ class Sensing:
         self.bound = 1.0
         if maps is not None:
             if maps.ndim != 4 or maps.shape[1:] != shape:
-                raise InputError(f"coil maps have shape {maps.shape}, expected (coil, {', '.join(map(str, shape))})")
+                raise InputError(
+                    f"coil maps have shape {maps.shape}, expected (coil, {', '.join(map(str, shape))})"
+                )
             self.maps = np.ascontiguousarray(maps, self.dtype)
             self.bound = float(np.max(np.sum(np.abs(self.maps.astype(np.complex128)) ** 2, axis=0)))
             if not self.bound > 0:
@@ -121,12 +126,12 @@ class Sensing:
         return np.ascontiguousarray(encoded, self.dtype)
 
     def residual_norm2(self, x: np.ndarray, encoded: np.ndarray) -> float:
-        """``||A x - y||^2`` for encoded data `y`."""
+        """Return ``||A x - y||^2`` for encoded data `y`."""
         total = 0.0
         for coil in range(self.coils):
             k = x.copy() if self.maps is None else self.maps[coil] * x
             difference = self._fft(k) * self._sampled - encoded[coil]
-            total += float(np.sum(difference.real**2, dtype=float) + np.sum(difference.imag**2, dtype=float))
+            total += float(np.linalg.norm(difference.ravel().astype(np.complex128)) ** 2)
         return total
 
     def backproject(self, encoded: np.ndarray) -> np.ndarray:
@@ -141,7 +146,7 @@ class Sensing:
         """``A^H y / sum_c |S_c|^2`` for encoded data `y`; zero where no coil sees."""
         x = self.backproject(encoded)
         if self.maps is not None:
-            seen = np.sum(self.maps.real**2 + self.maps.imag**2, axis=0)
+            seen = np.sum(np.abs(self.maps) ** 2, axis=0)
             np.divide(x, seen, out=x, where=seen > 0)
             x[seen == 0] = 0
         return x
@@ -163,9 +168,14 @@ class Sensing:
         if self.maps is None:
             return self.relax(z, encoded, 0.0, out)
         self._round_trips(z, encoded)
-        step = self._part(1 / self.bound)
+        step = self._real(1 / self.bound)
         self._share(
-            _combine_step, self.maps.reshape(self.coils, -1), self._work_lines, z.reshape(-1), step, out.reshape(-1)
+            _combine_step,
+            self.maps.reshape(self.coils, -1),
+            self._work_lines,
+            z.reshape(-1),
+            step,
+            out.reshape(-1),
         )
         return out
 
@@ -177,14 +187,12 @@ class Sensing:
         """
         np.copyto(out, w)
         self._fft(out)
-        taken = self._part(1 / (1 + rho))
-        self._share(_replace_sampled, out.reshape(-1), self._sampled.reshape(-1), encoded[0].reshape(-1), taken)
+        taken = self._real(1 / (1 + rho))
+        self._share(
+            _replace_sampled, out.reshape(-1), self._sampled.reshape(-1), encoded[0].reshape(-1), taken
+        )
         self._ifft(out)
         return out
-
-    @property
-    def _part(self) -> type[np.floating]:
-        return np.float32 if self.dtype == np.complex64 else np.float64
 
     @property
     def _work_lines(self) -> np.ndarray:

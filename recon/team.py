@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
+from itertools import pairwise
 from typing import Any
 
 SMALLEST_SHARE = 1 << 17
@@ -48,10 +49,7 @@ class Team:
             kernel(0, lines, *args)
             return
         edges = [lines * part // parts for part in range(parts + 1)]
-        futures = [
-            self._pool.submit(kernel, start, stop, *args)
-            for start, stop in zip(edges[:-1], edges[1:], strict=True)
-        ]
+        futures = [self._pool.submit(kernel, start, stop, *args) for start, stop in pairwise(edges)]
         for future in futures:
             future.result()
 

@@ -3,20 +3,21 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from functools import lru_cache
+from functools import cache
 
 import numpy as np
 
 from .. import InputError
 from . import filterbank
+from .precision import real_type
 from .team import Team
 from .wavelet_filters import analysis_filters
 
-COARSEST_SAMPLES = 16
+COARSEST_SAMPLES = 8
 """By default an axis is halved as long as at least this many samples remain."""
 
 
-@lru_cache(maxsize=None)
+@cache
 def _padded_filters(name: str, dtype: np.dtype) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, int]:
     """Analysis filters padded to a multiple of eight taps, synthesis filters, and the shift of PyWavelets."""
     low, high = analysis_filters(name)
@@ -28,12 +29,12 @@ def _padded_filters(name: str, dtype: np.dtype) -> tuple[np.ndarray, np.ndarray,
 
 
 def default_levels(lengths: Sequence[int]) -> int:
-    """Number of levels that leaves at least `COARSEST_SAMPLES` samples on the shortest axis.
+    """Return the number of levels that leaves at least `COARSEST_SAMPLES` samples on the shortest axis.
 
     Examples
     --------
     >>> default_levels([256, 256]), default_levels([181, 217, 181]), default_levels([12])
-    (4, 3, 0)
+    (5, 4, 0)
     """
     shortest, levels = min(lengths), 0
     while (shortest := (shortest + 1) // 2) >= COARSEST_SAMPLES:
@@ -97,8 +98,8 @@ class WaveletTransform:
         self.wavelet = wavelet
         self.axes = tuple(sorted(axes))
         self.dtype = np.dtype(dtype)
-        self.part = np.dtype(np.float32 if self.dtype in (np.complex64, np.float32) else np.float64)
-        # Rows are taken apart and put together sample by sample; a complex64 moves fastest as one 8-byte number.
+        self.part = np.dtype(real_type(dtype))
+        # Rows are taken apart sample by sample; a complex64 moves fastest as one 8-byte number.
         self._carrier = np.dtype(np.float64) if self.dtype == np.complex64 else self.dtype
         lengths = [shape[axis] for axis in self.axes]
         possible = int(np.ceil(np.log2(min(lengths)))) if min(lengths) > 1 else 0
@@ -129,7 +130,7 @@ class WaveletTransform:
         return out
 
     def inverse(self, c: np.ndarray, out: np.ndarray | None = None) -> np.ndarray:
-        """Return the image with coefficients `c`; `c` is overwritten when `out` is given (it may not be `c`)."""
+        """Return the image with coefficients `c`, which are overwritten when `out` is given (not `c`)."""
         if out is None:
             c, out = c.copy(), np.empty_like(c)
         for box in self._boxes[-2:0:-1]:
@@ -157,7 +158,9 @@ class WaveletTransform:
             self._along(axis, src, target, box, forward)
             src = target
 
-    def _along(self, axis: int, src: np.ndarray, dst: np.ndarray, box: tuple[int, ...], forward: bool) -> None:
+    def _along(
+        self, axis: int, src: np.ndarray, dst: np.ndarray, box: tuple[int, ...], forward: bool
+    ) -> None:
         n = box[axis]
         elements = box[0] * box[1] * box[2]
         if n < 2:

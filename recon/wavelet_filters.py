@@ -6,7 +6,7 @@ from difflib import get_close_matches
 from functools import lru_cache
 
 import numpy as np
-import pywt
+from pywt import Wavelet, wavelist
 
 from .. import InputError
 
@@ -27,11 +27,11 @@ def orthogonal_wavelets() -> tuple[str, ...]:
     >>> [name in names for name in ("haar", "db4", "sym8", "coif3", "bior2.2", "dmey")]
     [True, True, True, True, False, False]
     """
-    return tuple(name for name in pywt.wavelist(kind="discrete") if _is_orthonormal(name))
+    return tuple(name for name in wavelist(kind="discrete") if _is_orthonormal(name))
 
 
 def _is_orthonormal(name: str) -> bool:
-    wavelet = pywt.Wavelet(name)
+    wavelet = Wavelet(name)
     if not wavelet.orthogonal:
         return False
     h = np.asarray(wavelet.dec_lo)
@@ -70,5 +70,5 @@ def analysis_filters(name: str) -> tuple[np.ndarray, np.ndarray]:
     >>> low.round(3).tolist(), high.round(3).tolist()
     ([0.707, 0.707], [0.707, -0.707])
     """
-    wavelet = pywt.Wavelet(check_orthogonal(name))
+    wavelet = Wavelet(check_orthogonal(name))
     return np.asarray(wavelet.dec_lo)[::-1], np.asarray(wavelet.dec_hi)[::-1]

@@ -43,15 +43,27 @@ class WaveletSparse(BaseModel):
     name: ClassVar[str] = "wavelet-sparse"
 
     solver: Literal["fista", "admm"] = Field("fista", description="algorithm; both reach the same minimum")
-    wavelet: str = Field("db4", description="any orthogonal wavelet of PyWavelets, such as haar, db4, sym8, coif3")
-    levels: int | None = Field(None, ge=0, description="wavelet levels; by default down to about 16 samples an axis")
-    weight: float = Field(2.0, ge=0, description="regularisation weight in units of the noise's standard deviation")
-    wavelet_axes: Literal["auto", "xy", "xyz"] = Field(
-        "auto", description="transform each slice (xy) or the volume (xyz); auto: the volume where z is undersampled"
+    wavelet: str = Field(
+        "db4", description="any orthogonal wavelet of PyWavelets, such as haar, db4, sym8, coif3"
     )
-    penalise_coarsest: bool = Field(False, description="penalise the coarsest scale too")
-    tolerance: float = Field(1e-4, gt=0, description="stop when change and optimality residual are below this, relative")
-    iterations: int = Field(500, ge=1, description="largest number of iterations")
+    levels: int | None = Field(
+        None, ge=0, description="wavelet levels; by default down to 8 to 16 samples an axis"
+    )
+    weight: float = Field(
+        2.0, ge=0, description="regularisation weight in units of the noise's standard deviation"
+    )
+    wavelet_axes: Literal["auto", "xy", "xyz"] = Field(
+        "auto",
+        description="transform each slice (xy) or the volume (xyz); auto: the volume where z is undersampled",
+    )
+    penalise_coarsest: bool = Field(
+        True,
+        description="penalise the coarsest scale too; false needs a calibration region as wide as that scale",
+    )
+    tolerance: float = Field(
+        5e-6, gt=0, description="stop when change and optimality residual are below this, relative"
+    )
+    iterations: int = Field(1000, ge=1, description="largest number of iterations")
 
     @field_validator("wavelet")
     @classmethod
@@ -65,6 +77,7 @@ class WaveletSparse(BaseModel):
         import numpy as np
 
         from ..noise import estimate_sigma
+        from ..precision import real_type
 
         sigma = estimate_sigma(data) if data.sigma is None else data.sigma
         # a power of two: the result for scaled data has the very same digits
@@ -79,7 +92,7 @@ class WaveletSparse(BaseModel):
         if limits and len(solutions) > 1:
             stopped += f" in {len(limits)} of {len(solutions)} slices"
         return Reconstruction(
-            image=image * image.real.dtype.type(scale),
+            image=image * real_type(image.dtype)(scale),
             converged=not limits,
             stopped=stopped,
             iterations=max(s.iterations for s in solutions),

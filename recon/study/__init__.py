@@ -1,8 +1,8 @@
 """Studies: one TOML file stands for many cases, which are run, compared with a reference, and decided upon.
 
-``load_study`` reads and validates a study file, ``Study.cases`` lists its cases, ``estimate`` says what they will
-cost, ``run`` runs those that are not finished and writes tables and verdict, and ``study_schema`` is the JSON
-Schema of the file.
+``load_study`` reads and validates a study file, ``Study.cases`` lists its cases, ``estimate`` says what they
+will cost, ``run`` runs those that are not finished and writes tables and verdict, and ``study_schema`` is the
+JSON Schema of the file.
 
 Examples
 --------

@@ -45,7 +45,8 @@ class Case:
     ...     reference = Reference(phantom="line-pair-slab", matrix=(64, 64), field_of_view_mm=(240.0, 240.0))
     ...     sampling = Sampling(pattern="lines", acceleration=2, phase_encode="y")
     ...     acquisition = Acquisition(coils=1)
-    ...     return Case(7, reference, acquisition, sampling, Lines(power=power), "sparse", Method(), 0, noise_draw)
+    ...     pattern = Lines(power=power)
+    ...     return Case(7, reference, acquisition, sampling, pattern, "sparse", Method(), 0, noise_draw)
     >>> case(2.0).id == case(2.0).id, case(2.0).id == case(3.0).id, len(case(2.0).id)
     (True, False, 12)
     >>> case(2.0).settings["power"], case(2.0).settings["matrix"]
@@ -105,14 +106,16 @@ class Case:
         return _hash(self._content({k: v for k, v in self.condition.items() if k != "snr"}))
 
     def _content(self, settings: Mapping[str, Any]) -> dict[str, Any]:
-        """What counts of settings: of files their contents and not their names."""
+        """Return what counts of settings: of files their contents and not their names."""
         settings = {name: value for name, value in settings.items() if name != "maps"}
         if self.reference.kind != "phantom":
             settings["reference"] = self.reference.kind
         return {"version": RESULT_VERSION, "settings": settings, "files": dict(self.digests)}
 
     def __str__(self) -> str:
-        return ", ".join(f"{name} {text(value)}" for name, value in self.settings.items() if value is not None)
+        return ", ".join(
+            f"{name} {text(value)}" for name, value in self.settings.items() if value is not None
+        )
 
 
 def text(value: Any) -> str:

@@ -22,8 +22,8 @@ from dataclasses import dataclass
 
 from . import references
 from .cases import Case
-from .plan import Study
 from .machine import cores
+from .plan import Study
 
 START_SECONDS = 6.0
 CASE_SECONDS = 0.1

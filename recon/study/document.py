@@ -33,7 +33,7 @@ _ASSIGNMENT = re.compile(rf"^\s*({_DOTTED_KEY})\s*=(.*)$")
 
 @dataclass(frozen=True)
 class Document:
-    """A study file after its overrides, before validation.
+    r"""A study file after its overrides, before validation.
 
     Attributes
     ----------
@@ -49,7 +49,7 @@ class Document:
 
     Examples
     --------
-    >>> text = '[study]\\ntitle = "Slab"\\n\\n[sampling]\\nacceleration = [2, 4]\\n'
+    >>> text = '[study]\ntitle = "Slab"\n\n[sampling]\nacceleration = [2, 4]\n'
     >>> document = parse(text, Path("slab.toml"), ["sampling.acceleration=3"])
     >>> document.values["sampling"]["acceleration"], document.lines["study", "title"]
     (3, 2)
@@ -119,7 +119,7 @@ def read_document(path: str | Path, overrides: Iterable[str] = ()) -> Document:
 
 
 def parse(text: str, path: Path, overrides: Iterable[str] = ()) -> Document:
-    """Parse the text of a study file and apply overrides.
+    r"""Parse the text of a study file and apply overrides.
 
     Parameters
     ----------
@@ -138,9 +138,9 @@ def parse(text: str, path: Path, overrides: Iterable[str] = ()) -> Document:
 
     Examples
     --------
-    >>> parse("[study]\\nseed = 7\\n", Path("slab.toml"), ["study.title=Two words"]).values
+    >>> parse("[study]\nseed = 7\n", Path("slab.toml"), ["study.title=Two words"]).values
     {'study': {'seed': 7, 'title': 'Two words'}}
-    >>> parse("[study\\n", Path("slab.toml"))
+    >>> parse("[study\n", Path("slab.toml"))
     Traceback (most recent call last):
         ...
     skipline.InputError: slab.toml, line 1: not valid TOML: expected ']' at the end of a table declaration
@@ -156,7 +156,7 @@ def parse(text: str, path: Path, overrides: Iterable[str] = ()) -> Document:
 
 def _syntax_error(text: str, path: Path, message: str) -> str:
     found = re.search(r" \(at (?:line (\d+), column \d+|end of document)\)$", message)
-    line = text.count("\n") + 1
+    line = len(text.rstrip().splitlines())
     if found:
         message = message[: found.start()]
         line = int(found.group(1) or line)
@@ -171,7 +171,7 @@ def _make_absolute(values: Mapping[str, Any], folder: Path) -> None:
 
 
 def _absolute(value: Any, folder: Path) -> Any:
-    """The same path or paths, relative to `folder`; what is no path is left to validation."""
+    """Return the same path or paths, relative to `folder`; what is no path is left to validation."""
     if isinstance(value, list):
         return [_absolute(item, folder) for item in value]
     if isinstance(value, str) and value:
@@ -197,7 +197,7 @@ def _override(values: dict[str, Any], overrides: Iterable[str]) -> tuple[dict[st
 
 
 def _value(text: str) -> Any:
-    """A TOML value, or the text itself: nobody should have to quote quotes in a shell."""
+    """Return a TOML value, or the text itself: nobody should have to quote quotes in a shell."""
     try:
         parsed = tomllib.loads(f"value = {text}")
     except tomllib.TOMLDecodeError:
@@ -207,7 +207,9 @@ def _value(text: str) -> Any:
 
 def _put(values: dict[str, Any], keys: Keys, value: Any) -> None:
     if len(keys) < 2:
-        raise InputError(f"--set {dotted(keys)}: expected table.key=value, for example sampling.acceleration=4")
+        raise InputError(
+            f"--set {dotted(keys)}: expected table.key=value, for example sampling.acceleration=4"
+        )
     place: Any = values
     for i, key in enumerate(keys):
         so_far = dotted(keys[:i])
@@ -219,7 +221,7 @@ def _put(values: dict[str, Any], keys: Keys, value: Any) -> None:
                 )
             if key >= len(place):
                 raise InputError(
-                    f"--set {dotted(keys)}: {so_far} has {len(place)} items, counted from 0; there is no {key}"
+                    f"--set {dotted(keys)}: {so_far} has {len(place)} items, from 0; there is no {key}"
                 )
         elif not isinstance(place, dict) or isinstance(key, int):
             raise InputError(f"--set {dotted(keys)}: {so_far or 'a study file'} has no item {key!r}")
@@ -243,7 +245,7 @@ def dotted(keys: Keys) -> str:
 
 
 def locate(text: str) -> dict[Keys, int]:
-    """Find the line of each table and key in valid TOML.
+    r"""Find the line of each table and key in valid TOML.
 
     Parameters
     ----------
@@ -257,8 +259,8 @@ def locate(text: str) -> dict[Keys, int]:
 
     Examples
     --------
-    >>> lines = locate('[limits]\\nnrmse = { at_most = 0.05 }\\n\\n[[reconstruction]]\\nmethod = "zero-filled"\\n')
-    >>> lines["limits", "nrmse"], lines["reconstruction", 0, "method"]
+    >>> lines = locate('[study]\nseed = 7\n\n[[reconstruction]]\nmethod = "zero-filled"\n')
+    >>> lines["study", "seed"], lines["reconstruction", 0, "method"]
     (2, 5)
     """
     lines: dict[Keys, int] = {}

@@ -69,7 +69,7 @@ def evaluate(case: Case, threads: int = 1) -> Evaluated:
     prepared = prepared_for(case)
     mask = draw_mask(case, prepared)
     sigma = prepared.sigma(case.acquisition.snr)
-    # Without noise there is nothing to regularise in full data; of undersampled data a method finds the level itself.
+    # Without noise full data need no regularisation; of undersampled data a method finds the level itself.
     known_sigma = sigma if sigma > 0 or mask.all() else None
     kspace = acquire(prepared.kspace, mask, sigma, generator(case.seed, "noise", case.noise_draw))
     method: Any = case.method
@@ -124,7 +124,7 @@ def draw_mask(case: Case, prepared: Prepared) -> np.ndarray:
 def measure(prepared: Prepared, image: np.ndarray) -> dict[str, float]:
     """Return every measure there is, by name."""
     return {
-        name: float(plugins.load("measures", name).measure(prepared.image, image, prepared.support))
+        name: float(plugins.load("measures", name).compute(prepared.image, image, prepared.support))
         for name in plugins.measures()
     }
 

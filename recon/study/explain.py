@@ -67,7 +67,9 @@ def first_problem(error: ValidationError, model: type[BaseModel]) -> Problem:
     return key, _sentence(dict(chosen), context, model, len(same_key) > 1)
 
 
-def _sentence(problem: Mapping[str, Any], context: Mapping[str, Any], model: type[BaseModel], several: bool) -> str:
+def _sentence(
+    problem: Mapping[str, Any], context: Mapping[str, Any], model: type[BaseModel], several: bool
+) -> str:
     kind, value = str(problem["type"]), problem.get("input")
     if kind == "missing":
         return "is missing" if len(problem["loc"]) == 1 else f"expected one more item in {shown(value)}"
@@ -110,7 +112,7 @@ _BOUNDS = {"ge": "at least", "gt": "more than", "le": "at most", "lt": "less tha
 
 
 def _type_name(model: type[BaseModel], problem: Mapping[str, Any]) -> str:
-    """The types a key may have, in words."""
+    """Name the types a key may have, in words."""
     field = model.model_fields.get(str(problem["loc"][0]))
     text = str(field.annotation) if field else "another value"
     words = {"int": "a whole number", "float": "a number", "str": "text", "bool": "true or false"}

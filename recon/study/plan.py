@@ -128,7 +128,9 @@ def load_study(path: str | Path, overrides: Iterable[str] = ()) -> Study:
     ]
     acquisitions = _tables(document, ("acquisition",), Acquisition)
     if acquisitions[0].noise_draws > 1 and all(acquisition.snr is None for acquisition in acquisitions):
-        raise document.refusal(("acquisition", "noise_draws"), "there is no noise to draw; give an snr as well")
+        raise document.refusal(
+            ("acquisition", "noise_draws"), "there is no noise to draw; give an snr as well"
+        )
     samplings = _named(document, ("sampling",), "patterns", "pattern", Sampling)
     methods = [
         method
@@ -145,13 +147,15 @@ def load_study(path: str | Path, overrides: Iterable[str] = ()) -> Study:
 
 
 def _check_tables(document: Document) -> None:
-    """The tables that must be there are, and no other."""
+    """Refuse a table that is missing, unknown, or no table."""
     for name, table in document.values.items():
         if name not in TABLES:
             raise document.refusal((name,), f"is not a table of a study file{nearest(name, TABLES)}")
         if name == "reconstruction":
             if not isinstance(table, list):
-                raise document.refusal((name,), "expected [[reconstruction]], in double brackets: one a method")
+                raise document.refusal(
+                    (name,), "expected [[reconstruction]], in double brackets: one a method"
+                )
             if not all(isinstance(item, dict) for item in table):
                 raise document.refusal((name,), f"expected [[reconstruction]] tables, not {shown(table)}")
         elif isinstance(table, list) and all(isinstance(item, dict) for item in table):
@@ -159,9 +163,9 @@ def _check_tables(document: Document) -> None:
         elif not isinstance(table, dict):
             raise document.refusal((name,), f"expected a table, not {shown(table)}")
     for name in ("study", "reference", "sampling", "reconstruction"):
-        if not document.values.get(name):
+        if name not in document.values or document.values[name] == []:
             brackets = f"[[{name}]]" if name == "reconstruction" else f"[{name}]"
-            raise InputError(f"{document.path}: the table {brackets} is missing or empty")
+            raise InputError(f"{document.path}: the table {brackets} is missing")
 
 
 def _one(document: Document, keys: Keys, model: type[Table], values: Mapping[str, Any]) -> Table:
@@ -178,19 +182,23 @@ def _tables(document: Document, keys: Keys, model: type[Table]) -> list[Table]:
     """Validate all combinations of a table."""
     table = document.values.get(str(keys[0]), {})
     _check_axes(document, keys, table)
-    return list(dict.fromkeys(_one(document, keys, model, one) for one in combinations(table, model.model_fields)))
+    return list(
+        dict.fromkeys(_one(document, keys, model, one) for one in combinations(table, model.model_fields))
+    )
 
 
 def _check_axes(document: Document, keys: Keys, table: Mapping[str, Any]) -> None:
     for key, value in table.items():
         if value == []:
-            raise document.refusal((*keys, key), "an empty list leaves nothing to run; expected at least one value")
+            raise document.refusal(
+                (*keys, key), "an empty list leaves nothing to run; expected at least one value"
+            )
 
 
 def _named(
     document: Document, keys: Keys, kind: str, name_key: str, base: type[Sampling] | None = None
 ) -> list[tuple[str, Any, BaseModel]]:
-    """Combinations of a table that names plug-ins and holds their options.
+    """Return the combinations of a table that names plug-ins and holds their options.
 
     An option is accepted when one of the named plug-ins has it, and goes to those that do.
     """
@@ -212,7 +220,9 @@ def _named(
     for key in table:
         if key not in known:
             whose = " or ".join(f'"{name}"' for name in models)
-            raise document.refusal((*keys, key), f"is not a key here, nor an option of {whose}{nearest(key, known)}")
+            raise document.refusal(
+                (*keys, key), f"is not a key here, nor an option of {whose}{nearest(key, known)}"
+            )
 
     found = []
     for name, model in models.items():
@@ -233,7 +243,9 @@ def _limits(document: Document) -> dict[str, Limit]:
         keys = ("limits", name)
         measure = _placed(document, keys, plugins.load, "measures", name)
         if not isinstance(values, dict):
-            raise document.refusal(keys, f"expected {{ at_most = ... }} or {{ at_least = ... }}, not {shown(values)}")
+            raise document.refusal(
+                keys, f"expected {{ at_most = ... }} or {{ at_least = ... }}, not {shown(values)}"
+            )
         limit = limits[name] = _one(document, keys, Limit, values)
         better = {"lower": "at_most", "higher": "at_least"}[measure.better]
         if getattr(limit, better) is None:
@@ -252,11 +264,11 @@ def _setting(
     where = ("acquisition", "maps" if acquisition.maps else "coils")
     shape = _placed(document, source, references.shape, reference)
     coils = _placed(document, where, references.coil_count, reference, acquisition)
-    files = {key: getattr(reference, key) for key in ("image", "phase", "kspace")} | {"maps": acquisition.maps}
+    files = {key: getattr(reference, key) for key in ("image", "phase", "kspace")} | {
+        "maps": acquisition.maps
+    }
     digests = tuple((key, references.digest(path)) for key, path in files.items() if path)
-    fitted = tuple(
-        (_fit(document, sampling, pattern, shape), pattern) for _, sampling, pattern in samplings
-    )
+    fitted = tuple((_fit(document, sampling, pattern, shape), pattern) for _, sampling, pattern in samplings)
     return Setting(reference, acquisition.model_copy(update={"coils": coils}), fitted, digests)
 
 

@@ -52,10 +52,10 @@ class Prepared:
     like: Volume | None
 
     def sigma(self, snr: float | None) -> float:
-        """Standard deviation of the noise in the real part of k-space for an SNR of the combined image.
+        """Return the standard deviation of the noise in k-space for an SNR of the combined image.
 
-        The combined image's noise is that of k-space divided by the root of ``sum_c |S_c|^2``, so the object's
-        magnitude is weighted with it.
+        The combined image's noise is that of k-space divided by the root of ``sum_c |S_c|^2``, so the
+        object's magnitude is weighted with it.
 
         Parameters
         ----------
@@ -86,7 +86,9 @@ def complete(reference: Reference) -> Reference:
     """
     if reference.phantom is None:
         return reference
-    field_of_view = reference.field_of_view_mm or tuple(map(float, _phantom(reference.phantom).field_of_view_mm))
+    field_of_view = reference.field_of_view_mm or tuple(
+        map(float, _phantom(reference.phantom).field_of_view_mm)
+    )
     return reference.model_copy(
         update={"matrix": reference.matrix or MATRIX, "field_of_view_mm": field_of_view}
     )
@@ -130,7 +132,9 @@ def coil_count(reference: Reference, acquisition: Acquisition) -> int:
         return measured or acquisition.coils or 1
     maps = given_maps(acquisition.maps)
     if maps.shape[1:] != shape(reference):
-        raise InputError(f"the coil maps are {_by(maps.shape[1:])} and the reference is {_by(shape(reference))}")
+        raise InputError(
+            f"the coil maps are {_by(maps.shape[1:])} and the reference is {_by(shape(reference))}"
+        )
     for what, number in (("the k-space has", measured), ("coils =", acquisition.coils)):
         if number not in (None, maps.shape[0]):
             raise InputError(f"the coil maps are for {maps.shape[0]} coils, but {what} {number}")
@@ -243,7 +247,7 @@ def _source(reference: Reference) -> Volume:
 
 
 def _source_data(reference: Reference) -> np.ndarray:
-    """The file's data, (x, y, z), or (coil, x, y, z) for k-space."""
+    """Return the file's data, (x, y, z), or (coil, x, y, z) for k-space."""
     data = np.asarray(_source(reference).data)
     if reference.kspace is None:
         if data.ndim != 3:
@@ -251,10 +255,14 @@ def _source_data(reference: Reference) -> np.ndarray:
         if reference.slices is not None:
             first, last = reference.slices
             if last >= data.shape[2]:
-                raise InputError(f"slices: [{first}, {last}] is outside the volume, which has {data.shape[2]}, from 0")
+                raise InputError(
+                    f"slices: [{first}, {last}] is outside the volume, which has {data.shape[2]}, from 0"
+                )
             data = data[:, :, first : last + 1]
             if not data.any():
-                raise InputError(f"slices {first} to {last} are zero everywhere; there is nothing to compare with")
+                raise InputError(
+                    f"slices {first} to {last} are zero everywhere; there is nothing to compare with"
+                )
     elif not np.iscomplexobj(data):
         raise InputError("expected complex k-space, but the values are real")
     return data
@@ -283,7 +291,7 @@ def _combine(images: np.ndarray, maps: np.ndarray) -> np.ndarray:
 
 
 def _power(maps: np.ndarray) -> np.ndarray:
-    return np.sum(maps.real**2 + maps.imag**2, axis=0)
+    return np.sum(np.abs(maps) ** 2, axis=0)
 
 
 def _by(lengths: tuple[int, ...]) -> str:

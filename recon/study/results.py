@@ -24,8 +24,8 @@ from .cases import Case
 from .document import render
 from .evaluate import Evaluated
 from .references import Prepared
-from .sweep import combinations
 from .settings import Reference
+from .sweep import combinations
 
 
 def check_folder(folder: Path, study: plan.Study) -> None:
@@ -52,7 +52,7 @@ def check_folder(folder: Path, study: plan.Study) -> None:
 
 
 def open_folder(folder: Path, study: plan.Study) -> None:
-    """Create the results folder and write the study into it, as it was run: overrides applied, paths absolute."""
+    """Create the results folder and write the study as it is run: overrides applied, paths absolute."""
     check_folder(folder, study)
     text = f"# {study.document.path.name} as it was run: overrides applied, paths absolute.\n\n"
     try:
@@ -63,7 +63,7 @@ def open_folder(folder: Path, study: plan.Study) -> None:
 
 
 def _check_owner(folder: Path, study: plan.Study) -> None:
-    """The same title and seed, and at least one reference in common, make the same study."""
+    """Refuse another study: one of another title or seed, or with no reference in common."""
     try:
         there = tomllib.loads((folder / "study.toml").read_text(encoding="utf-8"))
         about = there["study"]
@@ -140,7 +140,9 @@ def reference_file(folder: Path, study_cases: list[Case], case: Case) -> Path:
 def holds_reference(path: Path, case: Case) -> bool:
     """Whether a reference image is already there."""
     try:
-        sidecar = json.loads(path.with_name(path.name.replace(".nii.gz", ".json")).read_text(encoding="utf-8"))
+        sidecar = json.loads(
+            path.with_name(path.name.replace(".nii.gz", ".json")).read_text(encoding="utf-8")
+        )
     except (OSError, ValueError):
         return False
     return path.exists() and sidecar.get("Reference") == case.reference_id
@@ -149,7 +151,9 @@ def holds_reference(path: Path, case: Case) -> bool:
 def write_reference(path: Path, case: Case, prepared: Prepared) -> None:
     """Write the coil-combined, noise-free, fully sampled reference image."""
     description = f"fully sampled reference: {case.settings['reference']}"
-    _volume(path, prepared.image, prepared, "image", {"Reference": case.reference_id, "Description": description})
+    _volume(
+        path, prepared.image, prepared, "image", {"Reference": case.reference_id, "Description": description}
+    )
 
 
 def _volume(path: Path, data: np.ndarray, prepared: Prepared, content: str, sidecar: dict[str, Any]) -> None:

@@ -111,7 +111,8 @@ def run(study: Study, folder: str | Path, workers: int | None = None, progress: 
         except KeyboardInterrupt:
             kept = len(cases) - len(todo) + done
             raise KeyboardInterrupt(
-                f"stopped; {kept} of {len(cases)} cases are finished and kept: the same command goes on from there"
+                f"stopped; {kept} of {len(cases)} cases are finished and kept, "
+                "the same command goes on from there"
             ) from None
 
     rows = [Row(case, records[case.id], failures.get(case.id, "")) for case in cases]
@@ -139,7 +140,7 @@ def run_case(case: Case, folder: Path, threads: int) -> str:
 
 
 def _prepare(study: Study, folder: Path, cases: list[Case]) -> None:
-    """Open the folder and write the reference images that are not there, refusing what cannot be used first."""
+    """Open the folder and write the reference images that are missing; refuse first what cannot be used."""
     by_reference = {case.reference_id: case for case in reversed(cases)}
     missing = {
         results.reference_file(folder, cases, case): case

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import BaseModel, Field, field_validator, model_validator
 from pydantic_core import PydanticCustomError
 
 from .sweep import SINGLE
@@ -15,15 +15,15 @@ from .sweep import SINGLE
 PhaseEncode = Literal["x", "y", "z", "xy", "xz", "yz"]
 
 
-class _Table(BaseModel):
-    model_config = ConfigDict(extra="forbid", frozen=True, strict=True)
+class _Table(BaseModel, extra="forbid", frozen=True, strict=True):
+    """A table: unknown keys are refused, and so is text where a number is expected."""
 
 
 def _refusal(key: str, message: str) -> PydanticCustomError:
     return PydanticCustomError("study", "{message}", {"key": key, "message": message})
 
 
-class About(_Table):
+class About(_Table, frozen=True):
     """What the study is.
 
     Examples
@@ -36,10 +36,12 @@ class About(_Table):
     seed: Annotated[int, SINGLE] = Field(
         ge=0, description="Seed of all random numbers: masks and noise are the same whenever it is the same."
     )
-    description: Annotated[str, SINGLE] = Field("", description="What the study is for; shown in the report.")
+    description: Annotated[str, SINGLE] = Field(
+        default="", description="What the study is for; shown in the report."
+    )
 
 
-class Reference(_Table):
+class Reference(_Table, frozen=True):
     """The fully sampled object that every case is compared with.
 
     Examples
@@ -48,26 +50,31 @@ class Reference(_Table):
     'phantom'
     """
 
-    phantom: str | None = Field(None, description="Name of a numerical phantom with closed-form k-space.")
+    phantom: str | None = Field(
+        default=None, description="Name of a numerical phantom with closed-form k-space."
+    )
     image: str | None = Field(
-        None,
+        default=None,
         description="NIfTI volume, real or complex. A relative path is relative to the study file's folder; "
         "given with --set, to the current folder.",
     )
     phase: Annotated[str | None, SINGLE] = Field(
-        None, description="NIfTI volume with the phase of the image, which is then its magnitude."
+        default=None, description="NIfTI volume with the phase of the image, which is then its magnitude."
     )
     kspace: str | None = Field(
-        None, description="NIfTI volume of fully sampled k-space, centred; several coils need acquisition.maps."
+        default=None,
+        description="NIfTI volume of fully sampled k-space, centred; several coils need acquisition.maps.",
     )
     matrix: tuple[Annotated[int, Field(ge=8)], Annotated[int, Field(ge=8)]] | None = Field(
-        None, description="Points along x and y; for phantoms only, 256 x 256 when not given."
+        default=None, description="Points along x and y; for phantoms only, 256 x 256 when not given."
     )
     field_of_view_mm: tuple[Annotated[float, Field(gt=0)], Annotated[float, Field(gt=0)]] | None = Field(
-        None, description="Field of view along x and y in mm; for phantoms only, the phantom's own when not given."
+        default=None,
+        description="Field of view along x and y in mm; for phantoms only, the phantom's own when not given.",
     )
     slices: tuple[Annotated[int, Field(ge=0)], Annotated[int, Field(ge=0)]] | None = Field(
-        None, description="First and last slice (z, counted from 0) of the image that are used; all when not given."
+        default=None,
+        description="First and last slice (z, counted from 0) of the image to use; all when not given.",
     )
 
     @model_validator(mode="after")
@@ -89,7 +96,8 @@ class Reference(_Table):
                 raise _refusal(key, f"goes with {owner} only, not with {given[0]}")
         if self.slices and self.slices[1] < self.slices[0]:
             raise _refusal(
-                "slices", f"expected [first, last], not [{self.slices[0]}, {self.slices[1]}]: the last is lower"
+                "slices",
+                f"expected [first, last], not [{self.slices[0]}, {self.slices[1]}]: the last is lower",
             )
         return self
 
@@ -104,7 +112,7 @@ class Reference(_Table):
         return str(getattr(self, self.kind))
 
 
-class Acquisition(_Table):
+class Acquisition(_Table, frozen=True):
     """How the reference is measured.
 
     Examples
@@ -114,20 +122,23 @@ class Acquisition(_Table):
     """
 
     coils: int | None = Field(
-        None,
+        default=None,
         ge=1,
-        description="Number of coils of a simulated ring array; 1, a uniform coil, when neither this nor maps is given.",
+        description="Number of coils of a simulated ring array; without this and maps 1, a uniform coil.",
     )
     snr: float | None = Field(
-        None,
+        default=None,
         gt=0,
-        description="Mean magnitude of the object / standard deviation of the noise in the real part of the fully "
-        "sampled image; no noise when not given, or inf.",
+        description="Mean magnitude of the object / standard deviation of the noise in the real part of the "
+        "fully sampled image; no noise when not given, or inf.",
     )
     maps: str | None = Field(
-        None, description="NIfTI volume of complex coil sensitivities (x, y, z, 1, coil); a path as reference.image."
+        default=None,
+        description="NIfTI volume of complex coil maps (x, y, z, 1, coil); a path as reference.image.",
     )
-    noise_draws: Annotated[int, SINGLE] = Field(1, ge=1, description="Independent draws of the noise.")
+    noise_draws: Annotated[int, SINGLE] = Field(
+        default=1, ge=1, description="Independent draws of the noise."
+    )
 
     @field_validator("snr")
     @classmethod
@@ -135,7 +146,7 @@ class Acquisition(_Table):
         return None if snr == float("inf") else snr
 
 
-class Sampling(_Table):
+class Sampling(_Table, frozen=True):
     """Which samples are taken; the options of the patterns stand in the same table.
 
     Examples
@@ -146,12 +157,13 @@ class Sampling(_Table):
 
     pattern: str = Field(description="Name of a sampling pattern.")
     phase_encode: PhaseEncode | None = Field(
-        None,
-        description="The axis, or the two axes, that are undersampled. When not given: y for patterns of lines; for "
-        "patterns of points yz for a volume, and xy, the plane across a 3-D scan's readout, for one slice.",
+        default=None,
+        description="The axis, or the two axes, that are undersampled. When not given: y for patterns of "
+        "lines; for patterns of points yz for a volume, and xy, the plane across a 3-D scan's readout, for "
+        "one slice.",
     )
     calibration: int | tuple[int, int] = Field(
-        0,
+        default=0,
         description="Fully sampled lines at the centre of k-space; for points the side of a square, or "
         "[[sides, of a rectangle]].",
     )
@@ -160,7 +172,9 @@ class Sampling(_Table):
         allow_inf_nan=False,
         description="Points of the phase-encode grid / samples taken, calibration region included.",
     )
-    draws: Annotated[int, SINGLE] = Field(1, ge=1, description="Independent draws of each random mask.")
+    draws: Annotated[int, SINGLE] = Field(
+        default=1, ge=1, description="Independent draws of each random mask."
+    )
 
     @field_validator("calibration")
     @classmethod
@@ -170,7 +184,7 @@ class Sampling(_Table):
         return calibration
 
 
-class Limit(_Table):
+class Limit(_Table, frozen=True):
     """The acceptance bound on a measure; the mean over the draws has to keep it.
 
     Examples
@@ -181,8 +195,12 @@ class Limit(_Table):
     at least 0.95
     """
 
-    at_most: Annotated[float | None, SINGLE] = Field(None, allow_inf_nan=False, description="Highest value allowed.")
-    at_least: Annotated[float | None, SINGLE] = Field(None, allow_inf_nan=False, description="Lowest value allowed.")
+    at_most: Annotated[float | None, SINGLE] = Field(
+        default=None, allow_inf_nan=False, description="Highest value allowed."
+    )
+    at_least: Annotated[float | None, SINGLE] = Field(
+        default=None, allow_inf_nan=False, description="Lowest value allowed."
+    )
 
     @model_validator(mode="after")
     def _some_bound(self) -> Limit:

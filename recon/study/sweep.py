@@ -7,7 +7,6 @@ from collections.abc import Iterator, Mapping
 from itertools import product
 from typing import Annotated, Any, Union, get_args, get_origin
 
-from pydantic import BaseModel
 from pydantic.fields import FieldInfo
 
 SINGLE = "one value"
@@ -91,7 +90,7 @@ def only_lists(field: FieldInfo) -> bool:
 
 
 def _sequences(annotation: Any) -> tuple[set[type], bool]:
-    """The sequence types an annotation allows, and whether it allows nothing else."""
+    """Return the sequence types an annotation allows, and whether it allows nothing else."""
     origin = get_origin(annotation)
     if origin is Annotated:
         return _sequences(get_args(annotation)[0])

@@ -144,7 +144,7 @@ def grouped(rows: Iterable[Row], key: Callable[[Row], Any]) -> list[list[Row]]:
 
 
 def mean(values: Sequence[float]) -> float | None:
-    """Mean; None of nothing. An infinite value (the PSNR of a perfect image) makes it infinite.
+    """Return the mean; None of nothing. An infinite value (the PSNR of a perfect image) makes it infinite.
 
     Examples
     --------
@@ -155,7 +155,7 @@ def mean(values: Sequence[float]) -> float | None:
 
 
 def deviation(values: Sequence[float]) -> float | None:
-    """Standard deviation with n - 1; None below two values, and where a value is infinite.
+    """Return the standard deviation with n - 1; None below two values, and where a value is infinite.
 
     Examples
     --------

@@ -84,7 +84,7 @@ class Curve:
         before = self.points[self.passed - 1] if self.passed else None
 
         def crossing(name: str) -> float:
-            """Where between the two points the limit is crossed, 0 to 1; without a first point, how far out."""
+            """Return how soon the limit is crossed after the last pass, 0 to 1; without one, how far out."""
             bound = limits[name].broken_bound(point.means[name])
             if before is None:
                 return -_excess(limits[name], point.means[name])
@@ -107,7 +107,9 @@ class Curve:
         return min(-_excess(limit, means[name]) for name, limit in limits.items())
 
 
-def decide(title: str, rows: Sequence[Row], limits: Mapping[str, Limit], measures: Sequence[str]) -> dict[str, Any]:
+def decide(
+    title: str, rows: Sequence[Row], limits: Mapping[str, Limit], measures: Sequence[str]
+) -> dict[str, Any]:
     """Return the verdict, as `verdict.json` says it.
 
     Parameters
@@ -178,7 +180,7 @@ def _mean(values: Sequence[float]) -> float:
 
 
 def _best(curves: Sequence[Curve], limits: Mapping[str, Limit]) -> list[Curve]:
-    """The curves, one a condition, of the choice that reaches furthest in its worst condition."""
+    """Return the curves, one a condition, of the choice that reaches furthest in its worst condition."""
     choices: dict[str, list[Curve]] = {}
     for curve in curves:
         choices.setdefault(str(curve.choice), []).append(curve)
@@ -206,7 +208,10 @@ def _sentence(weakest: Curve | None, label: str, condition: str, limits: Mapping
     if weakest.acceleration is None:
         assert failure is not None
         lowest = text(failure["acceleration"])
-        return f"No acceleration passes: at R = {lowest}, the lowest tried, {_breaks(failure)}{where} with the best, {label}."
+        return (
+            f"No acceleration passes: at R = {lowest}, the lowest tried, {_breaks(failure)}{where} "
+            f"with the best, {label}."
+        )
     highest = text(weakest.acceleration)
     if failure is None:
         return f"R = {highest} is the highest acceleration tried, and no limit broke with {label}."
@@ -223,7 +228,9 @@ def _breaks(failure: Mapping[str, Any]) -> str:
     value, limit = failure["mean"], failure["limit"]
     if not math.isfinite(failure["excess"]):
         return f"{failure['measure']} is {value}, its limit is {limit}"
-    return f"{failure['measure']} breaks first: {value:.4g}, {failure['excess']:.1%} beyond its limit of {limit}"
+    return (
+        f"{failure['measure']} breaks first: {value:.4g}, {failure['excess']:.1%} beyond its limit of {limit}"
+    )
 
 
 def _warnings(rows: Sequence[Row], not_converged: Sequence[Row], failed: Sequence[Row]) -> list[str]:
@@ -282,12 +289,10 @@ def _varying(settings: Iterable[Mapping[str, Any]]) -> set[str]:
 
 
 def _label(choice: Mapping[str, Any], names: set[str]) -> str:
-    """The choice in words: pattern and method, and what else tells it from the others."""
+    """Put the choice in words: pattern and method, and what else tells it from the others."""
     rest = _settings_text(choice, names - {"pattern", "method"})
     return f"{choice['pattern']} and {choice['method']}" + (f" ({rest})" if rest else "")
 
 
 def _settings_text(settings: Mapping[str, Any], names: set[str]) -> str:
-    return ", ".join(
-        f"{name} {text(value) or 'none'}" for name, value in settings.items() if name in names
-    )
+    return ", ".join(f"{name} {text(value) or 'none'}" for name, value in settings.items() if name in names)

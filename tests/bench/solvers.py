@@ -86,7 +86,9 @@ def make_case(name: str) -> Case:
 # ---- the plain script ------------------------------------------------------------------------------------
 
 
-def plain_fista(case: Case, item: int, threads: int, iterations: int, look: Callable | None = None) -> np.ndarray:
+def plain_fista(
+    case: Case, item: int, threads: int, iterations: int, look: Callable | None = None
+) -> np.ndarray:
     """FISTA as one writes it on SciPy and PyWavelets; the transforms uncentred to save the shifts."""
     axes = tuple(range(-case.mask.ndim, 0))
     mask = scipy.fft.ifftshift(case.mask, axes=axes).astype(np.float32)
@@ -207,7 +209,9 @@ def measure(name: str, runs: int, threads: int) -> list[str]:
 
 
 def main() -> None:
-    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
     parser.add_argument("cases", nargs="*", default=["slice", "stack", "coils", "volume"])
     parser.add_argument("--runs", type=int, default=5)
     parser.add_argument("--threads", type=int, default=2)
