@@ -1,76 +1,72 @@
-"""Patterns of phase-encode lines."""
+"""Patterns of lines along one phase-encode axis."""
 
 from __future__ import annotations
 
-from typing import ClassVar
+from typing import TYPE_CHECKING, ClassVar
 
-import numpy as np
-from pydantic import BaseModel, ConfigDict, Field
+from .pattern import Pattern
+from .variable_density import VariableDensity
 
-from .grid import Grid
+if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
+    from .grid import Grid
 
 
-class VariableDensityLines(BaseModel):
-    """Random phase-encode lines, denser towards the centre of k-space.
-
-    The inclusion probability of a line at the distance ``r`` from the centre is proportional to
-    ``(1 - r)^power``; lines of the calibration region are certain.
+class VariableDensityLines(VariableDensity):
+    """Random lines, denser towards the centre: the density falls as (1 - r)^power.
 
     Source: Lustig, Donoho & Pauly, Magn. Reson. Med. 58 (2007) 1182.
 
     Examples
     --------
-    >>> mask = VariableDensityLines().draw(Grid((64,), 8), 4, np.random.default_rng(0))
-    >>> int(mask.sum()), bool(mask[28:36].all())
-    (16, True)
+    >>> import numpy as np
+    >>> from skipline.masks import Grid
+    >>> pattern, grid = VariableDensityLines(power=1), Grid((8,), 2)
+    >>> pattern.density(grid, 2).round(2)
+    array([0.  , 0.22, 0.44, 1.  , 1.  , 0.67, 0.44, 0.22])
+    >>> int(pattern.draw(grid, 2, np.random.default_rng(1)).sum())
+    4
     """
 
-    model_config = ConfigDict(frozen=True, extra="forbid")
     name: ClassVar[str] = "variable-density-lines"
     axes: ClassVar[int] = 1
-    random: ClassVar[bool] = True
-
-    power: float = Field(3.0, ge=0, description="exponent of the density (1 - r)^power; 0 is uniform")
-
-    def draw(self, grid: Grid, acceleration: float, rng: np.random.Generator) -> np.ndarray:
-        """Return a mask, bool of the grid's shape, with ``grid.samples(acceleration)`` samples."""
-        from .variable_density import draw_power_law
-
-        return draw_power_law(grid, acceleration, self.power, rng)
 
 
-class RegularLines(BaseModel):
-    """Evenly spaced phase-encode lines, and all lines of the calibration region.
+class RegularLines(Pattern):
+    """Evenly spaced lines outside the calibration region; the same in every draw.
 
-    Without a calibration region and with an acceleration that divides the number of lines, every R-th line is
-    taken, the centre of k-space among them. Otherwise the lines outside the calibration region are spread
-    evenly, as far as the grid allows, so that the acceleration is met to the nearest line.
-
-    Source: regular undersampling, the sampling theorem (Shannon, Proc. IRE 37 (1949) 10).
+    They divide the rest of k-space, which is taken as periodic, from one side of the calibration region to
+    the other. Two spacings differ by at most one line, so that any R is met to the nearest line. Without a
+    calibration region the line k = 0 stands in for it: when R is a whole number that divides the number of
+    lines, the mask is every R-th line through k = 0, exactly.
 
     Examples
     --------
-    >>> mask = RegularLines().draw(Grid((12,)), 3, np.random.default_rng(0))
-    >>> mask.nonzero()[0]
-    array([0, 3, 6, 9])
+    >>> import numpy as np
+    >>> from skipline.masks import Grid
+    >>> RegularLines().draw(Grid((16,)), 4, np.random.default_rng()).nonzero()[0]
+    array([ 0,  4,  8, 12])
+    >>> RegularLines().draw(Grid((16,), 4), 2, np.random.default_rng()).nonzero()[0]
+    array([ 1,  3,  6,  7,  8,  9, 12, 14])
     """
 
-    model_config = ConfigDict(frozen=True, extra="forbid")
     name: ClassVar[str] = "regular-lines"
     axes: ClassVar[int] = 1
     random: ClassVar[bool] = False
 
-    def draw(self, grid: Grid, acceleration: float, rng: np.random.Generator) -> np.ndarray:
-        """Return a mask, bool of the grid's shape, with ``grid.samples(acceleration)`` samples."""
-        (n,) = grid.shape
-        samples = grid.samples(acceleration)
+    def _draw(self, grid: Grid, samples: int, rng: np.random.Generator) -> NDArray[np.bool_]:
+        import numpy as np
+
         mask = grid.calibration_region()
-        outside = np.flatnonzero(~mask)
-        left = samples - int(mask.sum())
-        if left == 0:
-            return mask
-        # the k-th of `left` lines, counted along those outside, such that line n // 2 belongs to the comb
-        centre = np.searchsorted(outside, n // 2)
-        steps = np.floor((np.arange(left) * len(outside)) / left + 0.5).astype(int)
-        mask[outside[(steps + centre) % len(outside)]] = True
+        centre = max(int(mask.sum()), 1)
+        last = grid.size // 2 - centre // 2 + centre - 1
+        # from the last line of the centre, past the end of k-space, to its first one
+        span = grid.size - centre + 1
+        intervals = samples - centre + 1
+        j = np.arange(intervals)  # line j is the one nearest to last + j span / intervals
+        mask[(last + (2 * j * span + intervals) // (2 * intervals)) % grid.size] = (
+            True  # nearest to j span / intervals
+        )
         return mask

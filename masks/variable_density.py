@@ -1,33 +1,71 @@
-"""A random draw under the power-law density."""
+"""Random samples, denser towards the centre of k-space."""
 
 from __future__ import annotations
 
-import numpy as np
+from typing import TYPE_CHECKING
 
-from .density import inclusion_probabilities, power_law
-from .grid import Grid
-from .pivotal import pivotal_draw
+from pydantic import Field
+
+from .pattern import Pattern
+
+if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
+    from .grid import Grid
 
 
-def draw_power_law(grid: Grid, acceleration: float, power: float, rng: np.random.Generator) -> np.ndarray:
-    """Draw positions of a grid with inclusion probabilities proportional to ``(1 - r)^power``.
+class VariableDensity(Pattern):
+    """Random samples whose inclusion probabilities follow the law (1 - r)^p.
 
-    Parameters
-    ----------
-    grid : Grid
-    acceleration : float
-    power : float
-    rng : numpy.random.Generator
-
-    Returns
-    -------
-    bool array of the grid's shape, with ``grid.samples(acceleration)`` True
+    The number of samples is fixed, and each point is taken with exactly the probability that `density` gives.
 
     Examples
     --------
-    >>> int(draw_power_law(Grid((100,)), 4, 2.0, np.random.default_rng(0)).sum())
-    25
+    >>> from skipline.masks import VariableDensityLines
+    >>> issubclass(VariableDensityLines, VariableDensity)
+    True
     """
-    samples = grid.samples(acceleration)
-    probabilities = inclusion_probabilities(power_law(grid, power), samples, grid.calibration_region())
-    return pivotal_draw(probabilities, rng)
+
+    power: float = Field(
+        2.0,
+        ge=0,
+        le=20,
+        description="density (1 - r)^power at the distance r from the centre of k-space; 0 is uniform",
+    )
+
+    def density(self, grid: Grid, acceleration: float) -> NDArray[np.float64]:
+        """Return the inclusion probabilities.
+
+        Parameters
+        ----------
+        grid : Grid
+        acceleration : float
+
+        Returns
+        -------
+        ndarray of float64
+            Of the shape of the grid: the probability of each point to be taken, 1 in the calibration region.
+
+        Raises
+        ------
+        InputError
+            As `draw` does.
+
+        Examples
+        --------
+        >>> from skipline.masks import Grid, VariableDensityPoints
+        >>> float(VariableDensityPoints().density(Grid((64, 48), 8), 6).sum().round(9))
+        512.0
+        """
+        return self._density(grid, self._samples(grid, acceleration))
+
+    def _density(self, grid: Grid, samples: int) -> NDArray[np.float64]:
+        from .density import inclusion_probabilities, power_law
+
+        return inclusion_probabilities(power_law(grid, self.power), samples, grid.calibration_region())
+
+    def _draw(self, grid: Grid, samples: int, rng: np.random.Generator) -> NDArray[np.bool_]:
+        from .pivotal import pivotal_draw
+
+        return pivotal_draw(self._density(grid, samples), rng)

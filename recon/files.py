@@ -7,6 +7,7 @@ term is used.
 
 from __future__ import annotations
 
+import errno
 import gzip
 import json
 import os
@@ -525,13 +526,12 @@ def _place(header: Any, affine: np.ndarray, like: Volume | None) -> None:
         for field in _GEOMETRY:
             header[field] = like.header[field]
     if not _agree(affine, like.affine, 1e-6):
-        moved = np.linalg.inv(like.affine) @ affine
-        qform, sform = header.get_qform(coded=True), header.get_sform(coded=True)
+        (qform, qform_code), (_, sform_code) = header.get_qform(coded=True), header.get_sform(coded=True)
         header["pixdim"][1:4] = _column_norms(affine)
-        if qform[0] is not None:
-            header.set_qform(qform[0] @ moved, int(qform[1]))
-        if sform[0] is not None:
-            header.set_sform(sform[0] @ moved, int(sform[1]))
+        if qform is not None:
+            header.set_qform(qform @ np.linalg.inv(like.affine) @ affine, int(qform_code))
+        if sform_code > 0:
+            header.set_sform(affine, int(sform_code))
     if not _agree(header.get_best_affine(), affine, 1e-4):
         header.set_sform(affine, "aligned")
 
@@ -561,6 +561,8 @@ def _replacing(path: Path) -> Iterator[IO[bytes]]:
     """Write to a temporary file in the same folder; it takes the place of `path` when all has gone well."""
     temporary = path.with_name(f".skipline-{secrets.token_hex(8)}.part")
     try:
+        if path.is_dir():
+            raise IsADirectoryError(errno.EISDIR, os.strerror(errno.EISDIR))
         try:
             with temporary.open("xb") as file:
                 yield file

@@ -119,9 +119,9 @@ class WaveletTransform:
         self._scratch = np.empty(shape, self.dtype)
 
     def forward(self, x: np.ndarray, out: np.ndarray | None = None) -> np.ndarray:
-        """Return the coefficients of `x`, written to `out` when given (which may not be `x`)."""
+        """Return the coefficients of `x`, written to `out` when given (which may be `x`)."""
         out = np.empty_like(x) if out is None else out
-        if self.levels == 0:
+        if self.levels == 0 and out is not x:
             np.copyto(out, x)
         source = x
         for box in self._boxes[:-1]:
@@ -130,15 +130,13 @@ class WaveletTransform:
         return out
 
     def inverse(self, c: np.ndarray, out: np.ndarray | None = None) -> np.ndarray:
-        """Return the image with coefficients `c`, which are overwritten when `out` is given (not `c`)."""
+        """Return the image with coefficients `c`, written to `out` when given (which may be `c`)."""
         if out is None:
-            c, out = c.copy(), np.empty_like(c)
-        for box in self._boxes[-2:0:-1]:
-            self._level(c, c, box, self.axes, forward=False)
-        if self.levels:
-            self._level(c, out, self._boxes[0], self.axes, forward=False)
-        else:
+            out = c.copy()
+        elif out is not c:
             np.copyto(out, c)
+        for box in self._boxes[-2::-1]:
+            self._level(out, out, box, self.axes, forward=False)
         return out
 
     def _level(

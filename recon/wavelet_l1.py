@@ -39,11 +39,10 @@ class WaveletL1:
         self.transform = transform
         self.weight = float(weight)
         self.penalise_coarsest = penalise_coarsest
-        self._coefficients = np.empty(transform.shape, transform.dtype)
 
     def value(self, x: np.ndarray) -> float:
         """``weight * ||W x||_1``."""
-        c = self.transform.forward(x, self._coefficients)
+        c = self.transform.forward(x)
         magnitude = float(np.sum(np.abs(c), dtype=np.float64))
         if not self.penalise_coarsest:
             magnitude -= float(np.sum(np.abs(c[self.transform.coarsest]), dtype=np.float64))
@@ -51,9 +50,9 @@ class WaveletL1:
 
     def prox(self, v: np.ndarray, step: float, out: np.ndarray) -> np.ndarray:
         """Write ``argmin_x ||x - v||^2 / 2 + step * weight * ||W x||_1`` to `out` (which may be `v`)."""
-        c = self.transform.forward(v, self._coefficients)
-        self.shrink(c, step)
-        return self.transform.inverse(c, out)
+        self.transform.forward(v, out)
+        self.shrink(out, step)
+        return self.transform.inverse(out, out)
 
     def shrink(self, c: np.ndarray, step: float) -> None:
         """Soft-threshold coefficients in place at ``step * weight``."""

@@ -50,7 +50,7 @@ class WaveletSparse(BaseModel):
         None, ge=0, description="wavelet levels; by default down to 8 to 16 samples an axis"
     )
     weight: float = Field(
-        2.0, ge=0, description="regularisation weight in units of the noise's standard deviation"
+        1.0, ge=0, description="regularisation weight in units of the noise's standard deviation"
     )
     wavelet_axes: Literal["auto", "xy", "xyz"] = Field(
         "auto",

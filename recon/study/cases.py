@@ -18,6 +18,12 @@ RESULT_VERSION = 1
 """Raised whenever the same settings give another result: cases of an older number are run again."""
 
 
+RESULTS = frozenset(
+    {"acceleration_achieved", "iterations", "converged", "stopped", "seconds", "error", "id", "note"}
+)
+"""Names of results; an option of such a name is called otherwise in tables."""
+
+
 @dataclass(frozen=True)
 class Case:
     """Everything that determines one result.
@@ -68,7 +74,8 @@ class Case:
     def settings(self) -> dict[str, Any]:
         """The settings by name, in the order of the tables' columns.
 
-        An option whose name is taken already has its owner's before it (``method_power``).
+        An option whose name is taken has its owner's before it: ``method_iterations`` is the limit that a
+        method was given, ``iterations`` what it took.
         """
         reference = self.reference
         settings: dict[str, Any] = {"reference": Path(reference.source).name}
@@ -144,7 +151,7 @@ def _plain(table: BaseModel, *names: str) -> dict[str, Any]:
 
 def _add(settings: dict[str, Any], owner: str, options: BaseModel) -> None:
     for name, value in options.model_dump(mode="json").items():
-        settings[f"{owner}_{name}" if name in settings else name] = value
+        settings[f"{owner}_{name}" if name in settings or name in RESULTS else name] = value
 
 
 def _hash(content: Mapping[str, Any]) -> str:

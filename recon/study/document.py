@@ -77,8 +77,8 @@ class Document:
     def _name(self, keys: Keys) -> str:
         table, *rest = keys
         if isinstance(self.values.get(str(table)), list):
-            number = [str(rest.pop(0) + 1)] if rest and isinstance(rest[0], int) else []
-            return " ".join([f"[[{table}]]", *(f"number {n}" for n in number), *map(str, rest)])
+            words = [f"number {key + 1}" if isinstance(key, int) else key for key in rest]
+            return " ".join([f"[[{table}]]", *words])
         return " ".join([f"[{table}]", *([dotted(tuple(rest))] if rest else [])])
 
 
@@ -212,25 +212,30 @@ def _put(values: dict[str, Any], keys: Keys, value: Any) -> None:
         )
     place: Any = values
     for i, key in enumerate(keys):
-        so_far = dotted(keys[:i])
-        if isinstance(place, list) and all(isinstance(item, dict) for item in place):
-            if not isinstance(key, int):
-                raise InputError(
-                    f"--set {dotted(keys)}: {so_far} is an array of {len(place)}; say which, "
-                    f"for example {so_far}.0.{dotted(keys[i:])}"
-                )
-            if key >= len(place):
-                raise InputError(
-                    f"--set {dotted(keys)}: {so_far} has {len(place)} items, from 0; there is no {key}"
-                )
-        elif not isinstance(place, dict) or isinstance(key, int):
-            raise InputError(f"--set {dotted(keys)}: {so_far or 'a study file'} has no item {key!r}")
+        _check_item(place, keys, i)
         if i == len(keys) - 1:
             place[key] = value
-        elif isinstance(place, list):
-            place = place[key]  # type: ignore[index]  # an int, as was checked above
-        else:
+        elif isinstance(place, dict):
             place = place.setdefault(key, {})
+        else:
+            place = place[key]
+
+
+def _check_item(place: Any, keys: Keys, i: int) -> None:
+    """Refuse ``keys[i]`` where it is no item of `place`, the value at ``keys[:i]``."""
+    key, so_far = keys[i], dotted(keys[:i])
+    if isinstance(place, list) and all(isinstance(item, dict) for item in place):
+        if not isinstance(key, int):
+            raise InputError(
+                f"--set {dotted(keys)}: {so_far} is an array of {len(place)}; say which, "
+                f"for example {so_far}.0.{dotted(keys[i:])}"
+            )
+        if key >= len(place):
+            raise InputError(
+                f"--set {dotted(keys)}: {so_far} has {len(place)} items, counted from 0; there is no {key}"
+            )
+    elif not isinstance(place, dict) or isinstance(key, int):
+        raise InputError(f"--set {dotted(keys)}: {so_far or 'a study file'} has no item {key!r}")
 
 
 def dotted(keys: Keys) -> str:

@@ -113,10 +113,10 @@ def load_study(path: str | Path, overrides: Iterable[str] = ()) -> Study:
     >>> from pathlib import Path
     >>> import skipline
     >>> file = Path(skipline.__file__).parent / "configs" / "first-study.toml"
-    >>> load_study(file, ["sampling.aceleration=2"])
+    >>> load_study(file, ["study.sede=2"])
     Traceback (most recent call last):
         ...
-    skipline.InputError: --set sampling.aceleration: is not a key here; did you mean "acceleration"?
+    skipline.InputError: --set study.sede: is not a key here; did you mean "seed"?
     """
     document = read_document(path, overrides)
     _check_tables(document)

@@ -18,7 +18,7 @@ from typing import Any
 import numpy as np
 
 from ... import InputError
-from ..files import write_json, write_text, write_volume
+from ..files import Content, phase_encoding, read_sidecar, write_json, write_text, write_volume
 from . import plan
 from .cases import Case
 from .document import render
@@ -113,16 +113,12 @@ def write_case(folder: Path, case: Case, prepared: Prepared, evaluated: Evaluate
     place = case_folder(folder, case)
     shutil.rmtree(place, ignore_errors=True)
     place.mkdir(parents=True)
-    sidecar = {"Case": case.id}
-    _volume(place / "image.nii.gz", evaluated.image, prepared, "image", {**sidecar, "Description": str(case)})
-    _volume(
-        place / "error.nii.gz", evaluated.error, prepared, "map",
-        {**sidecar, "Description": "magnitude of the image minus magnitude of the reference"},
-    )  # fmt: skip
-    _volume(
-        place / "mask.nii.gz", evaluated.mask, prepared, "mask",
-        {**sidecar, "Description": "sampled points of centred k-space", "EncodedAxes": "xyz"},
-    )  # fmt: skip
+    about = {"Case": case.id}
+    encoded = phase_encoding(case.sampling.phase_encode or "")
+    difference = "magnitude of the image minus magnitude of the reference"
+    _volume(place / "image.nii.gz", evaluated.image, prepared, "image", about | {"Description": str(case)})
+    _volume(place / "error.nii.gz", evaluated.error, prepared, "map", about | {"Description": difference})
+    _volume(place / "mask.nii.gz", evaluated.mask, prepared, "mask", about | encoded)
     write_json(place / "case.json", finite(evaluated.record))
 
 
@@ -139,13 +135,7 @@ def reference_file(folder: Path, study_cases: list[Case], case: Case) -> Path:
 
 def holds_reference(path: Path, case: Case) -> bool:
     """Whether a reference image is already there."""
-    try:
-        sidecar = json.loads(
-            path.with_name(path.name.replace(".nii.gz", ".json")).read_text(encoding="utf-8")
-        )
-    except (OSError, ValueError):
-        return False
-    return path.exists() and sidecar.get("Reference") == case.reference_id
+    return path.exists() and read_sidecar(path).get("Reference") == case.reference_id
 
 
 def write_reference(path: Path, case: Case, prepared: Prepared) -> None:
@@ -156,7 +146,9 @@ def write_reference(path: Path, case: Case, prepared: Prepared) -> None:
     )
 
 
-def _volume(path: Path, data: np.ndarray, prepared: Prepared, content: str, sidecar: dict[str, Any]) -> None:
+def _volume(
+    path: Path, data: np.ndarray, prepared: Prepared, content: Content, sidecar: dict[str, Any]
+) -> None:
     write_volume(path, data, prepared.affine, content=content, sidecar=sidecar, like=prepared.like)
 
 

@@ -26,6 +26,7 @@ def axis(value: Any, field: FieldInfo | None) -> list[Any]:
 
     Examples
     --------
+    >>> from pydantic import BaseModel
     >>> class Table(BaseModel):
     ...     acceleration: float
     ...     matrix: tuple[int, int]
@@ -64,6 +65,7 @@ def combinations(
 
     Examples
     --------
+    >>> from pydantic import BaseModel
     >>> class Table(BaseModel):
     ...     pattern: str
     ...     acceleration: float

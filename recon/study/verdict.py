@@ -129,11 +129,10 @@ def decide(
         ``first_failure``, ``curves``, ``warnings``, ``not_converged``, ``failed``, ``limits``, ``caution``.
     """
     curves = [_curve(group, limits, measures) for group in grouped(rows, _curve_key)]
-    choice_names = _varying([curve.choice for curve in curves]) | {"pattern", "method"}
     condition_names = _varying([curve.condition for curve in curves])
     best = _best(curves, limits) if limits else []
     weakest = min(best, key=lambda curve: (curve.acceleration or 0.0, curve.margin(limits)), default=None)
-    label = _label(best[0].choice, choice_names) if best else ""
+    label = _label(best[0], curves) if best else ""
     condition = _settings_text(weakest.condition, condition_names) if weakest else ""
     not_converged = [row for row in rows if row.record is not None and not row.converged]
     failed = [row for row in rows if row.record is None]
@@ -145,7 +144,7 @@ def decide(
         "choice": dict(best[0].choice) if best and weakest and weakest.acceleration else None,
         "first_failure": weakest.first_failure(limits) if weakest else None,
         "limits": {name: limit.model_dump(exclude_none=True) for name, limit in limits.items()},
-        "curves": [_as_dict(curve, limits, choice_names, condition_names) for curve in curves],
+        "curves": [_as_dict(curve, limits, curves, condition_names) for curve in curves],
         "warnings": _warnings(rows, not_converged, failed),
         "not_converged": [{"id": row.case.id, "case": str(row.case)} for row in not_converged],
         "failed": [{"id": row.case.id, "case": str(row.case), "error": row.failure} for row in failed],
@@ -247,10 +246,10 @@ def _warnings(rows: Sequence[Row], not_converged: Sequence[Row], failed: Sequenc
 
 
 def _as_dict(
-    curve: Curve, limits: Mapping[str, Limit], choice_names: set[str], condition_names: set[str]
+    curve: Curve, limits: Mapping[str, Limit], curves: Sequence[Curve], condition_names: set[str]
 ) -> dict[str, Any]:
     return {
-        "label": _label(curve.choice, choice_names),
+        "label": _label(curve, curves),
         "condition_label": _settings_text(curve.condition, condition_names),
         "pattern": curve.choice["pattern"],
         "method": curve.choice["method"],
@@ -283,14 +282,15 @@ def _varying(settings: Iterable[Mapping[str, Any]]) -> set[str]:
     values: dict[str, set[str]] = {}
     listed = list(settings)
     for name in {name for one in listed for name in one}:
-        # None stands for an option that the others have
-        values[name] = {text(one[name]) for one in listed if name in one}
+        values[name] = {text(one.get(name)) for one in listed}
     return {name for name, found in values.items() if len(found) > 1}
 
 
-def _label(choice: Mapping[str, Any], names: set[str]) -> str:
-    """Put the choice in words: pattern and method, and what else tells it from the others."""
-    rest = _settings_text(choice, names - {"pattern", "method"})
+def _label(curve: Curve, curves: Sequence[Curve]) -> str:
+    """Put the choice in words: pattern and method, and what tells it from others of the same two."""
+    choice = curve.choice
+    same = [c.choice for c in curves if all(c.choice[key] == choice[key] for key in ("pattern", "method"))]
+    rest = _settings_text(choice, _varying(same))
     return f"{choice['pattern']} and {choice['method']}" + (f" ({rest})" if rest else "")
 
 

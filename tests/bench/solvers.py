@@ -24,7 +24,7 @@ from rich.console import Console
 from rich.table import Table
 
 from skipline.masks import Grid, VariableDensityLines, VariableDensityPoints
-from skipline.phantoms import ring_array, shepp_logan_high_contrast
+from skipline.phantoms import ring_array, shepp_logan_high_contrast_phantom
 from skipline.recon.fista import Fista
 from skipline.recon.fourier import to_kspace
 from skipline.recon.problem import Problem, solve
@@ -55,7 +55,7 @@ class Case:
 def make_case(name: str) -> Case:
     """Invented data: a head, or a stack of heads of different size, in complex noise."""
     rng = np.random.default_rng(0)
-    head = shepp_logan_high_contrast().reference((256, 256))[..., 0]
+    head = shepp_logan_high_contrast_phantom().reference((256, 256))[..., 0]
     lines = VariableDensityLines().draw(Grid((256,), 24), ACCELERATION, rng)[None]
     maps = None
     if name == "slice":
@@ -69,7 +69,7 @@ def make_case(name: str) -> Case:
     else:
         edge = np.linspace(-1, 1, 128)
         outside = edge[:, None, None] ** 2 + (edge[:, None] * 1.2) ** 2 + edge**2
-        small = shepp_logan_high_contrast().reference((128, 128))[..., 0]
+        small = shepp_logan_high_contrast_phantom().reference((128, 128))[..., 0]
         images = (small[:, :, None] * (outside < 0.8) * (1 + 0.3 * np.cos(7 * edge)))[None]
         mask = VariableDensityPoints().draw(Grid((128, 128), (16, 16)), ACCELERATION, rng)[None]
         title = "one 128x128x128 volume"
@@ -177,14 +177,14 @@ def measure(name: str, runs: int, threads: int) -> list[str]:
     problems = [make_problem(case, item, inner) for item in range(count)]
     plain, ours = [], []
     for item in range(count):
-        best = solve(problems[item], Fista(iterations=4000, tolerance=1e-7)).objective
+        best = solve(problems[item], Fista(iterations=2000, tolerance=1e-6)).objective
         target = best * (1 + GAP)
         first = problems[item]
         ours.append(
-            iterations_to_gap(lambda look, p=first: solve(p, Fista(4000, 0.0), callback=look), first, target)
+            iterations_to_gap(lambda look, p=first: solve(p, Fista(2000, 0.0), callback=look), first, target)
         )
         plain.append(
-            iterations_to_gap(lambda look, i=item: plain_fista(case, i, threads, 4000, look), first, target)
+            iterations_to_gap(lambda look, i=item: plain_fista(case, i, threads, 2000, look), first, target)
         )
 
     def run_plain() -> None:

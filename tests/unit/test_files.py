@@ -4,6 +4,7 @@ import json
 import subprocess
 import sys
 from pathlib import Path
+from typing import Any
 
 import hypothesis.extra.numpy as hnp
 import nibabel as nib
@@ -11,6 +12,7 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from nibabel.eulerangles import euler2mat
 
 from skipline import CAUTION, InputError, __version__
 from skipline.recon import files
@@ -33,13 +35,18 @@ DTYPES = ["u1", "i2", "i4", "f4", "f8", "c8", "c16", "i1", "u2", "u4", "i8", "u8
 def finite_arrays(dtype: str):
     shapes = hnp.array_shapes(min_dims=3, max_dims=5, min_side=1, max_side=5)
     kind = np.dtype(dtype)
-    elements = {"allow_nan": False, "allow_infinity": False} if kind.kind in "fc" else {}
+    elements: Any = {"allow_nan": False, "allow_infinity": False} if kind.kind in "fc" else {}
     return hnp.arrays(kind, shapes, elements=hnp.from_dtype(kind, **elements))
 
 
 def small_images() -> np.ndarray:
     rng = np.random.default_rng(1)
     return (rng.standard_normal((6, 5, 4)) + 1j * rng.standard_normal((6, 5, 4))).astype(np.complex64)
+
+
+def opened(path) -> Any:
+    """The file as nibabel itself opens it."""
+    return nib.load(path)  # type: ignore[attr-defined]
 
 
 # There and back
@@ -68,7 +75,7 @@ def test_every_type_and_shape_comes_back_bit_for_bit(tmp_path_factory, data, com
 )
 @settings(max_examples=60, deadline=None)
 def test_any_affine_comes_back_with_its_zooms(tmp_path_factory, rotation, voxel, origin, flip):
-    turn = nib.eulerangles.euler2mat(*rotation)  # type: ignore[attr-defined]
+    turn = euler2mat(*rotation)
     affine = np.eye(4)
     affine[:3, :3] = turn @ np.diag(voxel) * (-1 if flip else 1)
     affine[:3, 3] = origin
@@ -78,7 +85,7 @@ def test_any_affine_comes_back_with_its_zooms(tmp_path_factory, rotation, voxel,
     np.testing.assert_allclose(back.affine, affine, rtol=1e-5, atol=1e-4)
     np.testing.assert_allclose(back.zooms, voxel, rtol=1e-5)
     np.testing.assert_allclose(back.voxel_mm, voxel, rtol=1e-4)
-    header = nib.load(path).header  # type: ignore[attr-defined]
+    header = opened(path).header
     np.testing.assert_allclose(header.get_qform(), affine, rtol=1e-3, atol=1e-3)
 
 
@@ -93,7 +100,7 @@ def test_coils_are_dimension_5_of_the_file_and_the_first_in_memory(tmp_path):
     rng = np.random.default_rng(2)
     kspace = (rng.standard_normal((3, 6, 5, 2)) + 1j).astype(np.complex64)
     write_volume(tmp_path / "k.nii.gz", kspace, AFFINE, content="k-space")
-    stored = np.asanyarray(nib.load(tmp_path / "k.nii.gz").dataobj)  # type: ignore[attr-defined]
+    stored = np.asanyarray(opened(tmp_path / "k.nii.gz").dataobj)
     assert stored.shape == (6, 5, 2, 1, 3)
     assert stored[4, 3, 1, 0, 2] == kspace[2, 4, 3, 1]
     assert np.array_equal(read_volume(tmp_path / "k.nii.gz").data, kspace)
@@ -102,7 +109,7 @@ def test_coils_are_dimension_5_of_the_file_and_the_first_in_memory(tmp_path):
 def test_frames_are_dimension_4_of_the_file_and_come_before_coils(tmp_path):
     series = np.arange(2 * 1 * 4 * 3 * 2, dtype=np.float32).reshape(2, 1, 4, 3, 2)
     write_volume(tmp_path / "s.nii", series, AFFINE, content="image")
-    stored = np.asanyarray(nib.load(tmp_path / "s.nii").dataobj)  # type: ignore[attr-defined]
+    stored = np.asanyarray(opened(tmp_path / "s.nii").dataobj)
     assert stored.shape == (4, 3, 2, 2, 1)
     assert np.array_equal(read_volume(tmp_path / "s.nii").data, series)
     nib.Nifti1Image(stored[..., 0], AFFINE).to_filename(tmp_path / "four.nii")
@@ -141,10 +148,8 @@ def test_scaling_is_applied_and_told(tmp_path):
     image = nib.Nifti1Image(np.arange(24, dtype=np.int16).reshape(4, 3, 2), AFFINE)
     image.header.set_slope_inter(0.5, -3)
     image.to_filename(tmp_path / "a.nii")
-    # nibabel stores values so that the scaled ones are those given
-    raw = np.arange(24).reshape(4, 3, 2)
     back = read_volume(tmp_path / "a.nii")
-    np.testing.assert_allclose(back.data, raw, atol=0.25)
+    np.testing.assert_array_equal(back.data, 0.5 * np.arange(24).reshape(4, 3, 2) - 3)
     assert back.notes == ("a.nii: stored values are scaled by 0.5 and shifted by -3",)
 
 
@@ -164,7 +169,7 @@ def test_a_file_is_compressed_whatever_its_name_says(tmp_path):
 def test_axes_too_long_for_nifti_1_are_stored_as_nifti_2(tmp_path):
     data = np.ones((40000, 1, 1), np.uint8)
     write_volume(tmp_path / "a.nii", data, np.eye(4), content="map")
-    assert isinstance(nib.load(tmp_path / "a.nii"), nib.Nifti2Image)  # type: ignore[attr-defined]
+    assert isinstance(opened(tmp_path / "a.nii"), nib.Nifti2Image)
     assert read_volume(tmp_path / "a.nii").data.shape == data.shape
 
 
@@ -175,7 +180,7 @@ def other(tmp_path, klass=nib.Nifti1Image) -> Volume:
     """A file whose two transforms, zooms and units are all unusual."""
     image = klass(np.ones((6, 5, 4, 2), np.int16), None)
     image.header.set_sform(AFFINE, 4)
-    image.header.set_qform(np.diag([0.002, -0.003, 0.004, 1]) + np.eye(4, k=1) * 0, 1)
+    image.header.set_qform(np.diag([0.002, -0.003, 0.004, 1]), 1)
     image.header["pixdim"][1:5] = 0.002, 0.003, 0.004, 2.5
     image.header.set_xyzt_units("meter", "sec")
     image.to_filename(tmp_path / "other.nii.gz")
@@ -188,7 +193,7 @@ def test_transforms_zooms_and_units_of_another_file_survive(tmp_path, klass):
     assert like.units == ("meter", "sec")
     assert like.zooms == pytest.approx((0.002, 0.003, 0.004, 2.5))
     write_volume(tmp_path / "a.nii.gz", small_images(), like.affine, content="image", like=like)
-    written, given_file = (nib.load(tmp_path / name) for name in ("a.nii.gz", "other.nii.gz"))  # type: ignore[attr-defined]
+    written, given_file = (opened(tmp_path / name) for name in ("a.nii.gz", "other.nii.gz"))
     assert isinstance(written, klass)
     for field in ("pixdim", "qform_code", "sform_code", "srow_x", "quatern_b", "qoffset_x", "xyzt_units"):
         np.testing.assert_array_equal(written.header[field], given_file.header[field])
@@ -200,10 +205,10 @@ def test_part_of_a_volume_moves_both_transforms(tmp_path):
     part = like.affine.copy()
     part[:3, 3] += part[:3, :3] @ [0, 1, 2]
     write_volume(tmp_path / "a.nii", np.ones((6, 4, 1)), part, content="image", like=like)
-    written, given_file = (nib.load(tmp_path / name).header for name in ("a.nii", "other.nii.gz"))  # type: ignore[attr-defined]
-    np.testing.assert_allclose(written.get_sform(), part, rtol=1e-6)
+    written, given_file = (opened(tmp_path / name).header for name in ("a.nii", "other.nii.gz"))
+    np.testing.assert_array_equal(written.get_sform(), part.astype(np.float32))
     qform = given_file.get_qform()
-    np.testing.assert_allclose(written.get_qform()[:3, 3], qform[:3] @ [0, 1, 2, 1], rtol=1e-5)
+    np.testing.assert_allclose(written.get_qform()[:3, 3], qform[:3] @ [0, 1, 2, 1], rtol=1e-5, atol=1e-9)
     assert (int(written["qform_code"]), int(written["sform_code"])) == (1, 4)
 
 
@@ -308,11 +313,13 @@ def test_a_damaged_header_is_read_or_refused_in_one_line(tmp_path, capfd, offset
     whole = bytearray((tmp_path / "a.nii").read_bytes())
     whole[offset : offset + 2] = bytes([value, value])
     (tmp_path / "a.nii").write_bytes(whole)
+    message = f"{tmp_path / 'a.nii'} in one line"
     try:
         read_volume(tmp_path / "a.nii", allow_zero=True)
     except InputError as refusal:
-        assert "\n" not in str(refusal)
-        assert str(tmp_path / "a.nii") in str(refusal)
+        message = str(refusal)
+    assert "\n" not in message
+    assert str(tmp_path / "a.nii") in message
     assert capfd.readouterr() == ("", "")
 
 
@@ -408,7 +415,7 @@ def test_a_phase_of_zero_leaves_the_magnitude(tmp_path):
         (np.zeros((6, 5, 4)), {"affine": AFFINE + 0.5 * np.eye(4, k=3)}, "lies elsewhere in space"),
         (small_images(), {}, "is complex; expected a real magnitude and a real phase"),
         (np.zeros((6, 5, 4)), {"magnitude": small_images()}, "is complex"),
-        (np.zeros((6, 5, 4)), {"magnitude": small_images().real}, "has values below zero"),
+        (np.zeros((6, 5, 4)), {"magnitude": np.real(small_images())}, "has values below zero"),
     ],
 )
 def test_a_phase_that_does_not_fit_is_refused(tmp_path, phase, options, message):
@@ -569,7 +576,7 @@ def test_reading_loads_nothing_heavy_but_nibabel(tmp_path):
     program = (
         "import sys; from skipline.recon import files; early = 'nibabel' in sys.modules; "
         "files.read_volume(sys.argv[1]); "
-        "heavy = 'scipy', 'numba', 'skimage', 'matplotlib', 'pydantic', 'pandas', 'h5py'; "
+        "heavy = 'scipy.linalg', 'numba', 'skimage', 'matplotlib', 'pydantic', 'pandas', 'h5py'; "
         "print(early, [name for name in heavy if name in sys.modules])"
     )
     command = [sys.executable, "-c", program, str(tmp_path / "a.nii.gz")]

@@ -4,6 +4,7 @@ from pathlib import Path
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from skipline import InputError
 from skipline.recon.study.document import locate, parse, read_document, render
 

@@ -7,6 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from pydantic import BaseModel
+
 from skipline.recon.study.cases import Case
 from skipline.recon.study.settings import Acquisition, Limit, Reference, Sampling
 from skipline.recon.study.tables import Row, cases_csv, summary_csv

@@ -1,0 +1,96 @@
+"""The table of means: `summary.csv` with its constant columns told once."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+from ..study.settings import Limit
+from .findings import Findings
+from .wording import number, with_spread
+
+_ALWAYS = ("pattern", "acceleration", "method")
+_SHORT = {"acceleration": "R"}
+
+
+@dataclass(frozen=True)
+class Cell:
+    """A cell: its text, the spread in smaller type, and whether it is outside its limit."""
+
+    text: str
+    spread: str = ""
+    broken: bool = False
+    numeric: bool = False
+
+
+@dataclass(frozen=True)
+class Table:
+    """A table: what is the same in all rows, the heads of the columns, the rows."""
+
+    constants: str
+    heads: tuple[Cell, ...]
+    rows: tuple[tuple[Cell, ...], ...]
+
+
+def summary_table(findings: Findings) -> Table | None:
+    """Return the means of `summary.csv`; None when it has no rows.
+
+    A setting with one value is told above the table. So is an option that only some methods or patterns
+    have, when those agree.
+    """
+    rows = findings.summary
+    if not rows:
+        return None
+    columns = list(rows[0])
+    measures = [name.removesuffix("_mean") for name in columns if name.removesuffix("_mean") + "_sd" in columns]
+    settings = columns[: columns.index(f"{measures[0]}_mean")] if measures else []
+    limits = {name: Limit(**limit) for name, limit in findings.verdict["limits"].items()}
+    own = settings.index("pattern") if "pattern" in settings else 0
+    varying, constants = [], []
+    for place, name in enumerate(settings):
+        values = {row[name] for row in rows}
+        # blank among the conditions is a value (no noise); among the options it is another method's
+        told = values - {""} if place > own else values
+        if name in _ALWAYS or len(told) > 1:
+            varying.append(name)
+        elif told - {""}:
+            constants.append(f"{name} {told.pop()}")
+    heads = [Cell(_SHORT.get(name, name), numeric=_numeric(rows, name)) for name in varying]
+    heads += [Cell(name, numeric=True) for name in measures]
+    heads += [Cell(name, numeric=True) for name in ("n", "s", "not conv.", "failed")]
+    body = []
+    for row in rows:
+        cells = [Cell(row[name] or "–", numeric=_numeric(rows, name)) for name in varying]
+        cells += [_mean(row, name, limits.get(name)) for name in measures]
+        cells += [
+            Cell(row[f"{measures[0]}_n"], numeric=True),
+            Cell(number(row["seconds_mean"] or None, 3), numeric=True),
+            _count(row["not_converged"]),
+            _count(row["failed"]),
+        ]
+        body.append(tuple(cells))
+    return Table(", ".join(constants), tuple(heads), tuple(body))
+
+
+def _mean(row: Mapping[str, str], measure: str, limit: Limit | None) -> Cell:
+    if not row[f"{measure}_mean"]:
+        return Cell("–", numeric=True)
+    mean = float(row[f"{measure}_mean"])
+    deviation = float(row[f"{measure}_sd"]) if row[f"{measure}_sd"] else None
+    broken = limit is not None and not limit.allows(mean)
+    return Cell(*with_spread(mean, deviation), broken, numeric=True)
+
+
+def _count(amount: str) -> Cell:
+    return Cell("–" if amount == "0" else amount, numeric=True, broken=amount != "0")
+
+
+def _numeric(rows: Sequence[Mapping[str, str]], name: str) -> bool:
+    def is_number(value: str) -> bool:
+        try:
+            float(value)
+        except ValueError:
+            return not value
+        return True
+
+    return all(is_number(row[name]) for row in rows)
