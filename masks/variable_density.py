@@ -28,7 +28,7 @@ class VariableDensity(Pattern):
     """
 
     power: float = Field(
-        2.0,
+        default=2.0,
         ge=0,
         le=20,
         description="density (1 - r)^power at the distance r from the centre of k-space; 0 is uniform",

@@ -34,9 +34,9 @@ def estimate_sigma(data: Acquired) -> float:
     Examples
     --------
     >>> rng = np.random.default_rng(0)
-    >>> k = (rng.normal(size=(1, 64, 64, 1)) + 1j * rng.normal(size=(1, 64, 64, 1))) * 0.1
-    >>> k[0, 32, 32, 0] = 100
-    >>> round(estimate_sigma(Acquired(k, np.ones((1, 64, 1), bool))), 2)
+    >>> k = (rng.normal(size=(1, 128, 128, 1)) + 1j * rng.normal(size=(1, 128, 128, 1))) * 0.1
+    >>> k[0, 64, 64, 0] = 100
+    >>> round(estimate_sigma(Acquired(k, np.ones((1, 128, 1), bool))), 2)
     0.1
     """
     radius2 = np.zeros(data.shape)

@@ -89,11 +89,8 @@ class Panel:
 
 def panels(findings: Findings) -> list[tuple[str, list[Panel]]]:
     """Return the panels under each condition; a condition has a name when there are several.
-
-    Measures with a limit come first.
     """
     limits = {name: Limit(**limit) for name, limit in findings.verdict["limits"].items()}
-    measures = sorted(findings.measures, key=lambda name: name not in limits)
     style = styles(findings.curves)
     groups: dict[str, list[Curve]] = {}
     for curve in findings.curves:
@@ -101,7 +98,7 @@ def panels(findings: Findings) -> list[tuple[str, list[Panel]]]:
     found = []
     for condition, curves in groups.items():
         of_condition = []
-        for name in measures:
+        for name in findings.measures:
             lines = tuple(
                 Line(curve.label, style[curve.label], values)
                 for curve in curves

@@ -5,8 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from pathlib import Path
-from typing import Any
 
 import numpy as np
 
@@ -75,6 +73,8 @@ class Montages:
     Attributes
     ----------
     montages : tuple of Montage
+    matrix : str
+        The reference's matrix and field of view.
     condition : str
         Which object and acquisition, when the study has several.
     slice : str
@@ -89,6 +89,7 @@ class Montages:
     """
 
     montages: tuple[Montage, ...]
+    matrix: str
     condition: str
     slice: str
     window: str
@@ -147,7 +148,7 @@ def montages(findings: Findings) -> Montages | None:
         if case is not None and (case.folder / "image.nii.gz").is_file()
     }
     errors = {case: error_map(reference, image) for case, image in images.items()}
-    high = [np.quantile(np.abs(error), 0.995) for error in errors.values()]
+    high = [np.quantile(np.abs(error), 0.98) for error in errors.values()]
     error_top = nice_above(max(1e-3, *high, 0.0) / peak if peak else 1.0) * peak if high else peak
 
     def image(values: np.ndarray) -> Picture:
@@ -197,6 +198,7 @@ def montages(findings: Findings) -> Montages | None:
             )
             for plan in plans
         ),
+        matrix=_matrix(volume.data.shape, volume.voxel_mm),
         condition=condition.condition_label,
         slice=f"slice {slice_ + 1} of {volume.data.shape[2]}" if volume.data.shape[2] > 1 else "",
         window=number(100 * top / peak, 3),
@@ -320,6 +322,12 @@ def _mark(plan: _Plan, acceleration: float, deciding: Curve | None) -> str:
     return ""
 
 
+def _matrix(shape: Sequence[int], voxel_mm: Sequence[float]) -> str:
+    axes = 3 if shape[2] > 1 else 2
+    lengths = [number(n * size) for n, size in zip(shape, voxel_mm, strict=True)]
+    return f"{' × '.join(map(str, shape[:axes]))}, {' × '.join(lengths[:axes])} mm"
+
+
 def _best_slice(volume: np.ndarray) -> int:
     """Return the slice with most of the object; of several, the middle one."""
     from ...phantoms.acquisition import support
@@ -330,8 +338,3 @@ def _best_slice(volume: np.ndarray) -> int:
     largest = np.flatnonzero(area == area.max())
     return int(largest[len(largest) // 2])
 
-
-def reference_shape(path: Path) -> tuple[int, ...]:
-    """Return the shape of a reference image."""
-    shape: Any = read_volume(path).data.shape
-    return tuple(map(int, shape))

@@ -84,7 +84,10 @@ def _facts(findings: Findings) -> list[tuple[str, str]]:
 
 
 def _drawn(numbers: Sequence[int]) -> str:
-    return ", ".join(map(str, sorted(set(numbers))))
+    drawn = sorted(set(numbers))
+    if len(drawn) < 2:
+        return str(len(drawn))
+    return f"{len(drawn)}, numbers {drawn[0]} to {drawn[-1]}"
 
 
 def _noise(cases: Sequence[Finished]) -> str:

@@ -94,15 +94,15 @@ def encoded_axes(mask: np.ndarray) -> str:
     )[:2] or "y"
 
 
-def sampled_profile(case: Finished) -> list[float] | None:
-    """Return the share of samples taken along the (last) phase-encode axis of a case; None without a mask."""
+def sampled_profile(case: Finished) -> tuple[str, list[float]] | None:
+    """Return the last phase-encode axis of a case and the share taken along it; None without a mask."""
     path = case.folder / "mask.nii.gz"
     if not path.is_file():
         return None
     mask = read_volume(path).data != 0
     encoded = case.settings.get("phase_encode") or encoded_axes(mask)
     others = tuple(number for number, axis in enumerate("xyz") if axis != encoded[-1])
-    return [round(float(share), 3) for share in mask.mean(axis=others)]
+    return encoded[-1], [round(float(share), 3) for share in mask.mean(axis=others)]
 
 
 def _sampling(case: Finished) -> Mapping[str, Any]:

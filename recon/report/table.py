@@ -9,7 +9,7 @@ from ..study.settings import Limit
 from .findings import Findings
 from .wording import number, with_spread
 
-_ALWAYS = ("pattern", "acceleration", "method")
+_ALWAYS = ("acceleration", "method")
 _SHORT = {"acceleration": "R"}
 
 
@@ -57,7 +57,7 @@ def summary_table(findings: Findings) -> Table | None:
             constants.append(f"{name} {told.pop()}")
     heads = [Cell(_SHORT.get(name, name), numeric=_numeric(rows, name)) for name in varying]
     heads += [Cell(name, numeric=True) for name in measures]
-    heads += [Cell(name, numeric=True) for name in ("n", "s", "not conv.", "failed")]
+    heads += [Cell(name, numeric=True) for name in ("n", "seconds", "not converged", "failed")]
     body = []
     for row in rows:
         cells = [Cell(row[name] or "–", numeric=_numeric(rows, name)) for name in varying]

@@ -11,8 +11,8 @@ def number(value: Any, digits: int = 4) -> str:
 
     Examples
     --------
-    >>> number(0.054777), number(27.7219), number(4.0), number(12345.6), number(float("inf")), number(None)
-    ('0.05478', '27.72', '4', '12346', '∞', '–')
+    >>> number(0.054777), number(27.70), number(2.5), number(12345.6), number(float("inf")), number(None)
+    ('0.05478', '27.7', '2.5', '12346', '∞', '–')
     """
     if value is None:
         return "–"
@@ -22,7 +22,7 @@ def number(value: Any, digits: int = 4) -> str:
     if math.isinf(value):
         return "∞" if value > 0 else "−∞"
     text = f"{value:.{_decimals(value, digits)}f}"
-    text = text.rstrip("0").rstrip(".") if "." in text and value == int(value) else text
+    text = text.rstrip("0").rstrip(".") if "." in text else text
     return text.replace("-", "−")
 
 

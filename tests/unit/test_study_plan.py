@@ -92,7 +92,7 @@ def test_what_does_not_touch_the_result_does_not_touch_the_id(study_file, change
 
 
 @pytest.mark.parametrize(
-    "change", ["study.seed=8", "acquisition.snr=31", "reference.matrix=[64, 66]", "sampling.power=2"]
+    "change", ["study.seed=8", "acquisition.snr=31", "reference.matrix=[64, 66]", "sampling.power=3.5"]
 )
 def test_what_touches_the_result_touches_the_id(study_file, change):
     ids = [{case.id for case in load_study(study_file, overrides).cases()} for overrides in ([], [change])]
