@@ -70,7 +70,7 @@ class Acquired:
         if self.maps is None:
             if len(self.kspace) > 1:
                 raise InputError(
-                    f"k-space has {len(self.kspace)} coils but no coil maps are given; give one map for each coil"
+                    f"k-space has {len(self.kspace)} coils but no coil maps are given; give one for each coil"
                 )
         elif self.maps.shape != self.kspace.shape:
             raise InputError(

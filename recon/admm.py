@@ -88,13 +88,11 @@ class Admm:
                 d *= real(1 / factor)
             np.subtract(v, d, out=Wx)
             W.inverse(Wx, w)
-            stop = callback is not None and bool(callback(k, W.inverse(v)))
-            if stop or done:
-                break
-        x = W.inverse(v)
-        if done:
-            return x, True, "primal and dual residual within tolerance", k, change
-        return x, False, "stopped by the callback" if stop else "iteration limit", k, change
+            if callback is not None and callback(k, W.inverse(v)):
+                return W.inverse(v), False, "stopped by the callback", k, change
+            if done:
+                return W.inverse(v), True, "primal and dual residual within tolerance", k, change
+        return W.inverse(v), False, "iteration limit", self.iterations, change
 
 
 def _exact(problem: Problem, w: np.ndarray, rho: float, x: np.ndarray) -> None:
@@ -114,7 +112,6 @@ class _ConjugateGradients:
 
     def __call__(self, problem: Problem, w: np.ndarray, rho: float, x: np.ndarray) -> None:
         r, p, q = self._r, self._p, self._q
-        rho = real_type(x.dtype)(rho)
         problem.sensing.normal(x, q)
         np.subtract(self._backprojected, q, out=r)
         r += rho * (w - x)

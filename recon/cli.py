@@ -22,8 +22,8 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     help="Decide how far an MR scan can be accelerated.\n\n"
     "A study file names a reference, sampling patterns, accelerations, reconstruction methods and limits; "
-    "[bold]skipline run[/bold] does all combinations, compares them with the reference and says how far you may "
-    "go, and what breaks first.\n\nFor research and protocol prototyping, not for diagnosis.",
+    "[bold]skipline run[/bold] does all combinations, compares them with the reference and says how far you "
+    "may go, and what breaks first.\n\nFor research and protocol prototyping, not for diagnosis.",
     epilog="Begin with: [bold]skipline run first-study[/bold]",
 )
 
@@ -283,7 +283,7 @@ def recon(
     sigma: Annotated[
         float | None,
         typer.Option(
-            help="Standard deviation of the real part of the noise in k-space; by default estimated from its border.",
+            help="Standard deviation of the real part of the noise; by default from the border of k-space.",
             show_default=False,
         ),
     ] = None,
@@ -315,7 +315,9 @@ def recon(
     if maps is not None:
         sensitivities = read_volume(maps).data
         sensitivities = sensitivities if sensitivities.ndim == 4 else sensitivities[None]
-    acquired = Acquired(data, points, sensitivities, sigma)
+    if points.shape != data.shape[1:]:
+        sizes = [" x ".join(map(str, shape)) for shape in (points.shape, data.shape[1:])]
+        raise InputError(f"{mask} is {sizes[0]} and {kspace} is {sizes[1]}; expected the same grid")
     acquired = Acquired(data, without_full_axes(points), sensitivities, sigma)
     with _busy(f"{method}, {' x '.join(map(str, acquired.shape))}"):
         result = chosen.reconstruct(acquired, threads=threads or cores())
@@ -348,37 +350,36 @@ def compare(
     as_json: Annotated[bool, typer.Option("--json", help="Print JSON.")] = False,
 ) -> None:
     """Compare an image with its reference: every measure, inside the object and overall."""
+    import numpy as np
+
     from ..phantoms.acquisition import support
     from . import plugins
     from .files import read_volume, write_volume
     from .measures import error_map
+    from .study.results import finite
 
-    truth, other = read_volume(reference), read_volume(image)
+    truth, other = read_volume(reference), read_volume(image, allow_zero=True)
     for volume in (truth, other):
         if volume.data.ndim != 3:
             raise InputError(f"{volume.path} has {volume.data.ndim} dimensions; expected an image (x, y, z)")
     if truth.data.shape != other.data.shape:
         sizes = [" x ".join(map(str, volume.data.shape)) for volume in (truth, other)]
         raise InputError(f"{image} is {sizes[1]} and {reference} is {sizes[0]}; expected the same grid")
+    if not np.allclose(truth.affine, other.affine, atol=1e-3 * max(truth.voxel_mm)):
+        raise InputError(f"{image} and {reference} lie at different places; expected equal affines")
     inside = support(truth.data)
-    found = {}
-    for name in plugins.measures():
-        measure = plugins.load("measures", name)
-        found[name] = (float(measure.compute(truth.data, other.data, inside)), measure)
+    measures = {name: plugins.load("measures", name) for name in plugins.measures()}
+    found = {name: float(each.compute(truth.data, other.data, inside)) for name, each in measures.items()}
     if error is not None:
         about = {"Description": f"magnitude of {image.name} minus that of {reference.name}"}
-        write_volume(
-            error, error_map(truth.data, other.data), truth.affine, content="map", sidecar=about, like=truth
-        )
+        difference = error_map(truth.data, other.data)
+        write_volume(error, difference, truth.affine, content="map", sidecar=about, like=truth)
     if as_json:
-        print(
-            json.dumps({name: value for name, (value, _) in found.items()} | {"caution": CAUTION}, indent=2)
-        )
+        print(json.dumps(finite(found | {"caution": CAUTION}), indent=2))
         return
     width = max(map(len, found))
-    for name, (value, measure) in found.items():
-        number = f"{value:.4f} {measure.unit if measure.unit != '1' else ''}".strip()
-        print(f"{name:{width}}  {number:12}  {measure.description}")
+    for name, value in found.items():
+        print(f"{name:{width}}  {f'{value:.4f} {measures[name].unit}':12}  {measures[name].description}")
 
 
 @app.command("list", epilog="Example: [bold]skipline list methods[/bold]")

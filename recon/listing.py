@@ -45,16 +45,32 @@ def print_listing(kind: str | None = None) -> None:
 
 def _summary(kind: str, found: Any) -> str:
     if kind == "measures":
-        unit = "" if found.unit == "1" else f", in {found.unit}"
+        unit = f", in {found.unit}" if found.unit else ""
         return f"{found.description} ({found.better} is better{unit})"
     return (found.__doc__ or "").strip().split("\n")[0]
 
 
 def _options(found: Any) -> list[str]:
-    lines = []
-    for name, field in getattr(found, "model_fields", {}).items():
-        default = "required" if field.is_required() else f"default {field.default}"
-        limits = [str(limit) for limit in field.metadata]
-        about = "; ".join([*filter(None, [field.description]), default, *limits])
-        lines.append(f"{name}: {about}")
-    return lines
+    if not hasattr(found, "model_json_schema"):
+        return []
+    schema = found.model_json_schema()
+    return [
+        f"{name}: {_about(described, name in schema.get('required', ()))}"
+        for name, described in schema.get("properties", {}).items()
+    ]
+
+
+def _about(described: dict[str, Any], required: bool) -> str:
+    parts = [described.get("description", "")]
+    parts += [" | ".join(map(str, described["enum"]))] if "enum" in described else []
+    bounds = {
+        "minimum": "at least",
+        "exclusiveMinimum": "above",
+        "maximum": "at most",
+        "exclusiveMaximum": "below",
+    }
+    for kind in (described, *described.get("anyOf", ())):
+        parts += [f"{words} {kind[bound]:g}" for bound, words in bounds.items() if bound in kind]
+    default = described.get("default")
+    parts.append("required" if required else f"default {'chosen' if default is None else default}")
+    return "; ".join(filter(None, parts))

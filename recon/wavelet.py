@@ -177,7 +177,9 @@ class WaveletTransform:
             kernel = filterbank.analyse_columns if forward else filterbank.synthesise_columns
             reals = self.dtype.itemsize // self.part.itemsize
             line, outer = (plane, row) if axis == 0 else (row, plane)
+            source, target = (a.view(self.part).reshape(-1) for a in (src, dst))
+            strides = (line * reals, outer * reals, box[2] * reals)
             self.team.share(
-                kernel, n // 2 * box[1 - axis], src.view(self.part).reshape(-1), dst.view(self.part).reshape(-1),
-                n, line * reals, outer * reals, box[2] * reals, *filters, self._shift, elements=elements,
+                kernel, n // 2 * box[1 - axis], source, target, n, *strides,
+                *filters, self._shift, elements=elements,
             )  # fmt: skip

@@ -6,7 +6,7 @@ from difflib import get_close_matches
 from functools import lru_cache
 
 import numpy as np
-from pywt import Wavelet, wavelist
+from pywt import Wavelet, wavelist  # type: ignore[attr-defined]  # the package builds its names at run time
 
 from .. import InputError
 

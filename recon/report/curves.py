@@ -20,6 +20,9 @@ if TYPE_CHECKING:
 
 _MARKERS = ("o", "s", "^", "D", "v", "P", "X", "<", ">", "*")
 _DASHES: tuple[Any, ...] = ("-", (0, (5, 1.6)), (0, (1.4, 1.4)), (0, (5, 1.4, 1.4, 1.4)))
+_MANY = 10
+"""Above so many points of a line its markers are smaller."""
+
 _INCHES = (3.9, 2.9)
 _FRAME = (0.135, 0.165, 0.72, 0.735)
 """Left, bottom, width, height of the axes, the same in all panels; the limit is named at their right."""
@@ -83,13 +86,13 @@ class Panel:
         limit = f"; limit {self.limit}" if self.limit else ""
         return (
             f"{self.measure} against acceleration R, {len(self.lines)} lines, "
-            f"from {min(means):.3g} to {max(means):.3g} {self.unit}".rstrip() + limit
+            f"from {min(means):.3g} to {max(means):.3g} {self.unit}".rstrip()
+            + limit
         )
 
 
 def panels(findings: Findings) -> list[tuple[str, list[Panel]]]:
-    """Return the panels under each condition; a condition has a name when there are several.
-    """
+    """Return the panels under each condition; a condition has a name when there are several."""
     limits = {name: Limit(**limit) for name, limit in findings.verdict["limits"].items()}
     style = styles(findings.curves)
     groups: dict[str, list[Curve]] = {}
@@ -207,12 +210,13 @@ def _stroke(style: Style) -> dict[str, Any]:
 def _draw_line(axes: Axes, line: Line, shift: float) -> None:
     shown = {r: value for r, value in sorted(line.values.items()) if math.isfinite(value.mean)}
     at = [r + shift for r in shown]
-    axes.plot(at, [value.mean for value in shown.values()], **_stroke(line.style), zorder=3, clip_on=False)
+    stroke = _stroke(line.style) | ({"markersize": 3.4, "linewidth": 1.1} if len(at) > _MANY else {})
+    axes.plot(at, [value.mean for value in shown.values()], **stroke, zorder=3, clip_on=False)
     spread = {r: value for r, value in shown.items() if value.deviation is not None}
     axes.errorbar(
         [r + shift for r in spread], [value.mean for value in spread.values()],
-        yerr=[value.deviation for value in spread.values()],
-        fmt="none", ecolor=line.style.colour, elinewidth=1, capsize=2.2, capthick=1, zorder=2.5,
+        yerr=[value.deviation or 0.0 for value in spread.values()],
+        fmt="none", ecolor=line.style.colour, elinewidth=0.9, capsize=2, capthick=0.9, zorder=2.5,
     )  # fmt: skip
 
 

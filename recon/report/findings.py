@@ -238,7 +238,9 @@ def _curves(verdict: Mapping[str, Any], cases: tuple[Finished, ...]) -> tuple[Cu
             points=tuple(
                 Point(
                     float(point["acceleration"]),
-                    tuple(draws.get(_key({**told["choice"], **told["condition"]}, point["acceleration"]), [])),
+                    tuple(
+                        draws.get(_key({**told["choice"], **told["condition"]}, point["acceleration"]), [])
+                    ),
                     tuple(point["broken"]),
                 )
                 for point in told["points"]

@@ -36,12 +36,15 @@ class Tile:
         Name and value of the measure in the caption; empty for the reference and for errors.
     broken : tuple of str
         The measures whose mean over the draws is outside its limit.
+    converged : bool
+        False when the reconstruction stopped before it met its criterion.
     """
 
     picture: Picture | None
     what: str
     measure: str = ""
     broken: tuple[str, ...] = ()
+    converged: bool = True
 
 
 @dataclass(frozen=True)
@@ -128,7 +131,9 @@ def montages(findings: Findings) -> Montages | None:
         return None
     condition = (deciding if deciding in with_cases else with_cases[0]) or with_cases[0]
     curves = [curve for curve in with_cases if curve.condition == condition.condition]
-    plans = [_plan(curves, pattern, deciding) for pattern in dict.fromkeys(c.choice["pattern"] for c in curves)]
+    plans = [
+        _plan(curves, pattern, deciding) for pattern in dict.fromkeys(c.choice["pattern"] for c in curves)
+    ]
 
     a_case = next(case for curve in curves for point in curve.points for case in point.cases)
     volume = read_volume(findings.reference_of(a_case))
@@ -148,8 +153,7 @@ def montages(findings: Findings) -> Montages | None:
         if case is not None and (case.folder / "image.nii.gz").is_file()
     }
     errors = {case: error_map(reference, image) for case, image in images.items()}
-    high = [np.quantile(np.abs(error), 0.98) for error in errors.values()]
-    error_top = nice_above(max(1e-3, *high, 0.0) / peak if peak else 1.0) * peak if high else peak
+    error_top = _error_window(list(errors.values()), peak)
 
     def image(values: np.ndarray) -> Picture:
         return picture(np.abs(values[:, :, 0]), 0, top, GREY, voxel)
@@ -176,6 +180,7 @@ def montages(findings: Findings) -> Montages | None:
                     f"{column.name}, {of}",
                     _caption(case),
                     _broken(column.curve.at(r)),
+                    case is None or bool(case.record["convergence"]["converged"]),
                 )
                 for column, case in pairs
             ),
@@ -238,7 +243,10 @@ def choose_rows(tried: Sequence[float], wanted: Sequence[float | None], most: in
     while len(chosen) < min(most, len(tried)):
         places = sorted(tried.index(r) for r in chosen)
         gaps = [(b - a, (a + b) // 2) for a, b in zip(places, places[1:], strict=False)]
-        gaps += [(2 * places[0], places[0] // 2), (2 * (len(tried) - 1 - places[-1]), (places[-1] + len(tried)) // 2)]
+        gaps += [
+            (2 * places[0], places[0] // 2),
+            (2 * (len(tried) - 1 - places[-1]), (places[-1] + len(tried)) // 2),
+        ]
         _, middle = max(gaps, key=lambda gap: gap[0])
         chosen.append(tried[middle])
     return sorted(chosen)
@@ -247,10 +255,11 @@ def choose_rows(tried: Sequence[float], wanted: Sequence[float | None], most: in
 def _plan(curves: Sequence[Curve], pattern: str, deciding: Curve | None) -> _Plan:
     """Choose the settings of a pattern that reach furthest, and each method at its best."""
 
-    def reach(curve: Curve) -> tuple[bool, float, float]:
-        failure = curve.first_failure or {}
-        excess = failure.get("excess", math.inf)
-        return curve is deciding, curve.acceleration or 0.0, -float(excess)
+    def reach(curve: Curve) -> tuple[bool, float, bool, float]:
+        excess = float((curve.first_failure or {}).get("excess", math.inf))
+        as_decided = deciding is not None and curve.method == deciding.method
+        # solvers of one problem differ in the last digits only, which is no reason to change columns
+        return curve is deciding, curve.acceleration or 0.0, as_decided, -round(excess, 3)
 
     of_pattern = [curve for curve in curves if curve.choice["pattern"] == pattern]
     best = max(of_pattern, key=reach)
@@ -264,9 +273,7 @@ def _plan(curves: Sequence[Curve], pattern: str, deciding: Curve | None) -> _Pla
     names = list(by_method)[:METHODS]
     if best.choice["method"] not in names:
         names[-1] = best.choice["method"]
-    columns = tuple(
-        _Column(_method_name(by_method[name], paired), by_method[name]) for name in names
-    )
+    columns = tuple(_Column(_method_name(by_method[name], paired), by_method[name]) for name in names)
     tried = sorted({point.acceleration for column in columns for point in column.curve.points})
     failing = (best.first_failure or {}).get("acceleration")
     verdict = deciding.acceleration if deciding else None
@@ -322,6 +329,14 @@ def _mark(plan: _Plan, acceleration: float, deciding: Curve | None) -> str:
     return ""
 
 
+def _error_window(errors: Sequence[np.ndarray], peak: float) -> float:
+    """Return an end of the window that hides neither the worst nor the best: a few voxels lie beyond it."""
+    if not errors:
+        return peak
+    share = max(float(np.quantile(np.abs(errors), 0.98)) / peak, 1e-3)
+    return nice_above(share) * peak
+
+
 def _matrix(shape: Sequence[int], voxel_mm: Sequence[float]) -> str:
     axes = 3 if shape[2] > 1 else 2
     lengths = [number(n * size) for n, size in zip(shape, voxel_mm, strict=True)]
@@ -337,4 +352,3 @@ def _best_slice(volume: np.ndarray) -> int:
     area = support(volume).sum(axis=(0, 1))
     largest = np.flatnonzero(area == area.max())
     return int(largest[len(largest) // 2])
-

@@ -94,6 +94,7 @@ def render(findings: Findings) -> str:
         provenance=provenance(findings),
         study_text=findings.study_text,
         version=__version__,
+        listed=20,
     )
     # a file name may hold what is no character, which no file can
     return page.encode("utf-8", "replace").decode()
@@ -182,4 +183,5 @@ def _profile(findings: Findings) -> Profile | None:
     if case is None or found is None:
         return None
     axis, shares = found
-    return Profile(shares, f"samples along k{axis} at R = {number(case.acceleration)}, {case.settings['pattern']}")
+    pattern = case.settings["pattern"]
+    return Profile(shares, f"samples along phase encode {axis}: {pattern}, R = {number(case.acceleration)}")

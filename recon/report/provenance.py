@@ -25,7 +25,7 @@ class Trouble:
 
 @dataclass(frozen=True)
 class Provenance:
-    """Names and values to list, the failed and the not converged cases, and how all others ended."""
+    """Names and values to list, the failed and the not converged cases, and how the finished ones ended."""
 
     facts: tuple[tuple[str, str], ...]
     failed: tuple[Trouble, ...]

@@ -73,7 +73,9 @@ def mask_rows(findings: Findings) -> list[MaskRow]:
             )
         sampling = samplings[key]
         settings = ", ".join(
-            f"{name} {text(value)}" for name, value in sampling.items() if name != "pattern" and value is not None
+            f"{name} {text(value)}"
+            for name, value in sampling.items()
+            if name != "pattern" and value is not None
         )
         rows.append(MaskRow(str(sampling["pattern"]), settings, axes, tuple(tiles)))
     return [row for row in rows if row.tiles]
@@ -89,9 +91,12 @@ def encoded_axes(mask: np.ndarray) -> str:
     >>> encoded_axes(lines)
     'y'
     """
-    return "".join(
-        axis for number, axis in enumerate("xyz") if (mask != np.take(mask, [0], axis=number)).any()
-    )[:2] or "y"
+    return (
+        "".join(axis for number, axis in enumerate("xyz") if (mask != np.take(mask, [0], axis=number)).any())[
+            :2
+        ]
+        or "y"
+    )
 
 
 def sampled_profile(case: Finished) -> tuple[str, list[float]] | None:

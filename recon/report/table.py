@@ -42,7 +42,9 @@ def summary_table(findings: Findings) -> Table | None:
     if not rows:
         return None
     columns = list(rows[0])
-    measures = [name.removesuffix("_mean") for name in columns if name.removesuffix("_mean") + "_sd" in columns]
+    measures = [
+        name.removesuffix("_mean") for name in columns if name.removesuffix("_mean") + "_sd" in columns
+    ]
     settings = columns[: columns.index(f"{measures[0]}_mean")] if measures else []
     limits = {name: Limit(**limit) for name, limit in findings.verdict["limits"].items()}
     own = settings.index("pattern") if "pattern" in settings else 0

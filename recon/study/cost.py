@@ -6,8 +6,9 @@ transforms for each coil, a pair of wavelet transforms and a few passes over the
     seconds = CASE + points * (WRITTEN + iterations * (coils * FOURIER * log2(points) + WAVELET))
 
 A process starts, loads its libraries and takes its compiled code from the cache, or compiles it, once. An
-iterative method is taken to need `TYPICAL_ITERATIONS`, or its limit when that is lower. The constants were
-measured on one core of a laptop-class machine; expect a factor of two either way.
+iterative method is taken to need `TYPICAL_ITERATIONS`, or its limit when that is lower; with several coils an
+iteration of ADMM, which solves linear equations, counts `COIL_ADMM` fold. The constants were measured on one
+core of a small server; expect a factor of two either way, and more where the number of iterations is unusual.
 
 Memory. A process holds its libraries, and of k-space and maps a few copies for each coil.
 
@@ -25,16 +26,17 @@ from .cases import Case
 from .machine import cores
 from .plan import Study
 
-START_SECONDS = 6.0
-CASE_SECONDS = 0.1
-WRITTEN_SECONDS = 1.5e-6
-FOURIER_SECONDS = 1.0e-9
-WAVELET_SECONDS = 1.5e-8
-TYPICAL_ITERATIONS = 100
+START_SECONDS = 4.0
+CASE_SECONDS = 0.06
+WRITTEN_SECONDS = 1.0e-6
+FOURIER_SECONDS = 4.5e-10
+WAVELET_SECONDS = 1.2e-8
+TYPICAL_ITERATIONS = 200
+COIL_ADMM = 5.0
 
-PROCESS_BYTES = 350e6
+PROCESS_BYTES = 220e6
 COPIES_OF_COIL = 5
-COPIES_OF_IMAGE = 12
+COPIES_OF_IMAGE = 7
 
 CASE_BYTES = 8e3
 POINT_BYTES = 11.0
@@ -110,6 +112,8 @@ def _case_seconds(case: Case, points: int) -> float:
     coils = case.acquisition.coils or 1
     limit = getattr(case.method, "iterations", 0)
     iterations = min(limit, TYPICAL_ITERATIONS) if isinstance(limit, int) else TYPICAL_ITERATIONS
+    if coils > 1 and getattr(case.method, "solver", "") == "admm":
+        iterations *= COIL_ADMM
     iteration = coils * FOURIER_SECONDS * math.log2(points) + WAVELET_SECONDS
     return CASE_SECONDS + points * (WRITTEN_SECONDS + iterations * iteration)
 

@@ -74,6 +74,12 @@ def test_samples_are_the_nearest_whole_number_or_the_message_offers_an_accelerat
     assert grid.size / (highest + 0.01) <= max(calibration, 1) + 1e-9
 
 
+def test_one_sample_less_than_the_calibration_region_is_refused() -> None:
+    assert Grid((256,), 32).samples(256 / 32) == 32
+    with pytest.raises(InputError, match="needs 31 of 256 lines"):
+        Grid((256,), 32).samples(256 / 31)
+
+
 def test_a_half_is_rounded_upwards() -> None:
     assert Grid((255,)).samples(2) == 128
     assert Grid((5,)).samples(2) == 3

@@ -1,12 +1,9 @@
 """The patterns: R to the nearest sample, calibration region, reproducible, options, refusals."""
 
-import doctest
 import hashlib
 import subprocess
 import sys
-from importlib import import_module
 from math import prod
-from pkgutil import iter_modules
 from typing import Any
 
 import numpy as np
@@ -190,13 +187,3 @@ def test_the_names_of_the_package_are_there_and_no_others() -> None:
     assert all(getattr(skipline.masks, name) is not None for name in skipline.masks.__all__)
     with pytest.raises(AttributeError, match="has no attribute 'Nothing'"):
         _ = skipline.masks.Nothing
-
-
-def test_examples_in_the_docstrings() -> None:
-    modules = [skipline.masks] + [
-        import_module(f"skipline.masks.{found.name}") for found in iter_modules(skipline.masks.__path__)
-    ]
-    for module in modules:
-        result = doctest.testmod(module)
-        assert result.failed == 0, module.__name__
-        assert result.attempted > 0, module.__name__

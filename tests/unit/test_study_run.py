@@ -336,7 +336,7 @@ def test_processes_and_ctrl_c(study_file, tmp_path):
     )
     cases = tmp_path / "results" / "cases"
     end = time.monotonic() + 60
-    while time.monotonic() < end and len(list(cases.glob("*/case.json"))) < 4:
+    while time.monotonic() < end and process.poll() is None and len(list(cases.glob("*/case.json"))) < 4:
         time.sleep(0.01)
     process.send_signal(signal.SIGINT)
     _, stderr = process.communicate(timeout=30)
