@@ -42,28 +42,30 @@ class WaveletSparse(BaseModel):
     model_config = ConfigDict(frozen=True, extra="forbid")
     name: ClassVar[str] = "wavelet-sparse"
 
-    solver: Literal["fista", "admm"] = Field("fista", description="algorithm; both reach the same minimum")
+    solver: Literal["fista", "admm"] = Field(
+        default="fista", description="algorithm; both reach the same minimum"
+    )
     wavelet: str = Field(
-        "db4", description="any orthogonal wavelet of PyWavelets, such as haar, db4, sym8, coif3"
+        default="db4", description="any orthogonal wavelet of PyWavelets, such as haar, db4, sym8, coif3"
     )
     levels: int | None = Field(
-        None, ge=0, description="wavelet levels; by default down to 8 to 16 samples an axis"
+        default=None, ge=0, description="wavelet levels; by default down to 8 to 16 samples an axis"
     )
     weight: float = Field(
-        1.0, ge=0, description="regularisation weight in units of the noise's standard deviation"
+        default=1.0, ge=0, description="regularisation weight in units of the noise's standard deviation"
     )
     wavelet_axes: Literal["auto", "xy", "xyz"] = Field(
-        "auto",
+        default="auto",
         description="transform each slice (xy) or the volume (xyz); auto: the volume where z is undersampled",
     )
     penalise_coarsest: bool = Field(
-        True,
+        default=True,
         description="penalise the coarsest scale too; false needs a calibration region as wide as that scale",
     )
     tolerance: float = Field(
-        5e-6, gt=0, description="stop when change and optimality residual are below this, relative"
+        default=5e-6, gt=0, description="stop when change and optimality residual are below this, relative"
     )
-    iterations: int = Field(1000, ge=1, description="largest number of iterations")
+    iterations: int = Field(default=1000, ge=1, description="largest number of iterations")
 
     @field_validator("wavelet")
     @classmethod

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 from typing import TYPE_CHECKING, Any
@@ -196,7 +196,7 @@ def _about(measure: str) -> tuple[str, str, str]:
     return found.unit, found.description, found.better
 
 
-def _numbered(names: Any) -> dict[str, int]:
+def _numbered(names: Iterable[str]) -> dict[str, int]:
     return {name: number for number, name in enumerate(dict.fromkeys(names))}
 
 
@@ -210,8 +210,9 @@ def _stroke(style: Style) -> dict[str, Any]:
 def _draw_line(axes: Axes, line: Line, shift: float) -> None:
     shown = {r: value for r, value in sorted(line.values.items()) if math.isfinite(value.mean)}
     at = [r + shift for r in shown]
-    stroke = _stroke(line.style) | ({"markersize": 3.4, "linewidth": 1.1} if len(at) > _MANY else {})
-    axes.plot(at, [value.mean for value in shown.values()], **stroke, zorder=3, clip_on=False)
+    small = {"markersize": 3.4, "linewidth": 1.1} if len(at) > _MANY else {}
+    stroke: dict[str, Any] = {**_stroke(line.style), **small, "zorder": 3, "clip_on": False}
+    axes.plot(at, [value.mean for value in shown.values()], **stroke)
     spread = {r: value for r, value in shown.items() if value.deviation is not None}
     axes.errorbar(
         [r + shift for r in spread], [value.mean for value in spread.values()],

@@ -50,6 +50,11 @@ class Finished:
         """Which draw of the mask and of the noise."""
         return tuple(int(self.settings.get(name) or 0) for name in DRAWS)
 
+    @property
+    def converged(self) -> bool:
+        """Whether the reconstruction met its criterion."""
+        return bool(self.record.get("convergence", {}).get("converged", True))
+
     @cached_property
     def measures(self) -> Mapping[str, float]:
         """Value of each measure; JSON has infinite ones as text."""

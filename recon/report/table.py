@@ -33,7 +33,7 @@ class Table:
 
 
 def summary_table(findings: Findings) -> Table | None:
-    """Return the means of `summary.csv`; None when it has no rows.
+    """Return the means of `summary.csv`; None when it has none.
 
     A setting with one value is told above the table. So is an option that only some methods or patterns
     have, when those agree.
@@ -42,21 +42,23 @@ def summary_table(findings: Findings) -> Table | None:
     if not rows:
         return None
     columns = list(rows[0])
-    measures = [
-        name.removesuffix("_mean") for name in columns if name.removesuffix("_mean") + "_sd" in columns
-    ]
-    settings = columns[: columns.index(f"{measures[0]}_mean")] if measures else []
+    measures = [name.removesuffix("_sd") for name in columns if name.endswith("_sd")]
+    if not measures:
+        return None
+    settings = columns[: columns.index(f"{measures[0]}_mean")]
     limits = {name: Limit(**limit) for name, limit in findings.verdict["limits"].items()}
-    own = settings.index("pattern") if "pattern" in settings else 0
     varying, constants = [], []
-    for place, name in enumerate(settings):
-        values = {row[name] for row in rows}
-        # blank among the conditions is a value (no noise); among the options it is another method's
-        told = values - {""} if place > own else values
-        if name in _ALWAYS or len(told) > 1:
+    options = False
+    for name in settings:
+        values = dict.fromkeys(row[name] for row in rows)
+        if options:
+            # of an option, blank says that the pattern or the method has none; before, it is a value
+            values.pop("", None)
+        options = options or name == "pattern"
+        if name in _ALWAYS or len(values) > 1:
             varying.append(name)
-        elif told - {""}:
-            constants.append(f"{name} {told.pop()}")
+        else:
+            constants += [f"{name} {value}" for value in values if value]
     heads = [Cell(_SHORT.get(name, name), numeric=_numeric(rows, name)) for name in varying]
     heads += [Cell(name, numeric=True) for name in measures]
     heads += [Cell(name, numeric=True) for name in ("n", "seconds", "not converged", "failed")]

@@ -6,7 +6,7 @@ import io
 import re
 from collections.abc import Callable
 from html import escape
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -51,7 +51,7 @@ def inline_svg(build: Callable[[], Figure], name: str, description: str) -> str:
     """
     import matplotlib
 
-    own = {name: value for name, value in matplotlib.rcParamsDefault.items() if "backend" not in name}
+    own: Any = {name: value for name, value in matplotlib.rcParamsDefault.items() if "backend" not in name}
     text = io.StringIO()
     # rcParams are the only way to tell the SVG writer that text stays text and how ids are made
     with matplotlib.rc_context(own | {"svg.fonttype": "none", "svg.hashsalt": name}):

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from typing import Any
 
-
 _TINY = 1e-4
 """Below this, decimals would be mostly zeros."""
 

@@ -57,8 +57,8 @@ class Study:
     >>> from pathlib import Path
     >>> import skipline
     >>> file = Path(skipline.__file__).parent / "configs" / "first-study.toml"
-    >>> study = load_study(file, ["sampling.acceleration=2", "sampling.draws=1", "acquisition.noise_draws=1"])
-    >>> len(study.cases()) == len(study.methods)
+    >>> study = load_study(file, ["sampling.acceleration=2", "sampling.draws=1"])
+    >>> len(study.cases()) == len(study.settings[0].samplings) * len(study.methods)
     True
     """
 

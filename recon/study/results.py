@@ -122,6 +122,11 @@ def write_case(folder: Path, case: Case, prepared: Prepared, evaluated: Evaluate
     write_json(place / "case.json", finite(evaluated.record))
 
 
+def is_finished(folder: Path, case: Case) -> bool:
+    """Whether a case has been written to its end."""
+    return (case_folder(folder, case) / "case.json").exists()
+
+
 def discard_case(folder: Path, case: Case) -> None:
     """Remove what an interrupted or failed case has written."""
     shutil.rmtree(case_folder(folder, case), ignore_errors=True)

@@ -6,10 +6,12 @@ import multiprocessing
 import os
 import signal
 import threading
+import time
 from collections.abc import Callable, Generator, Iterator
 from concurrent.futures import Future, ProcessPoolExecutor, as_completed
 from contextlib import closing, contextmanager
 from dataclasses import dataclass
+from multiprocessing.process import BaseProcess
 from pathlib import Path
 from typing import Any
 
@@ -23,6 +25,9 @@ from .machine import cores, threads_of_children
 from .plan import Study
 from .tables import Row, cases_csv, summary_csv
 from .verdict import decide
+
+SECONDS_TO_END = 10.0
+"""How long a worker may clean up after Ctrl-C before it is killed."""
 
 
 @dataclass(frozen=True)
@@ -100,7 +105,10 @@ def run(study: Study, folder: str | Path, workers: int | None = None, progress: 
     done = 0
     with _progress_bar(len(cases), len(cases) - len(todo), progress) as advance:
         try:
-            with closing(_finished(todo, folder, min(workers or cores(), len(todo)))) as finished:
+            with (
+                _one_interrupt(),
+                closing(_finished(todo, folder, min(workers or cores(), len(todo)))) as finished,
+            ):
                 for case, message in finished:
                     if message:
                         failures[case.id] = message
@@ -176,11 +184,25 @@ def _in_processes(todo: list[Case], folder: Path, workers: int) -> Iterator[tupl
         except BaseException:
             # Ctrl-C, or the caller went away: whoever runs a case cleans up after it, then all end.
             executor.shutdown(wait=False, cancel_futures=True)
-            for child in set(multiprocessing.active_children()) - others:
-                child.terminate()
+            _end(set(multiprocessing.active_children()) - others)
             raise
         finally:
             executor.shutdown()
+            for case in todo:
+                # what a worker that was killed has left
+                if not results.is_finished(folder, case):
+                    results.discard_case(folder, case)
+
+
+def _end(workers: set[BaseProcess]) -> None:
+    """Ask worker processes to clean up and end, and do not wait for ever."""
+    for worker in workers:
+        worker.terminate()
+    patience = time.monotonic() + SECONDS_TO_END
+    for worker in workers:
+        worker.join(max(0.0, patience - time.monotonic()))
+        if worker.is_alive():
+            worker.kill()
 
 
 def _message(future: Future[str]) -> str:
@@ -223,6 +245,25 @@ def _work(case: Case, folder: Path, threads: int) -> str:
         return run_case(case, folder, threads)
     finally:
         _working.clear()
+
+
+@contextmanager
+def _one_interrupt() -> Iterator[None]:
+    """Let the first Ctrl-C raise KeyboardInterrupt, and the next ones not disturb the cleaning up."""
+    usual = signal.getsignal(signal.SIGINT)
+    if usual is not signal.default_int_handler or threading.current_thread() is not threading.main_thread():
+        yield
+        return
+
+    def interrupt(signum: int, frame: Any) -> None:
+        signal.signal(signal.SIGINT, signal.SIG_IGN)
+        raise KeyboardInterrupt
+
+    signal.signal(signal.SIGINT, interrupt)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, usual)
 
 
 @contextmanager

@@ -16,6 +16,7 @@ import statistics
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pywt
@@ -77,7 +78,7 @@ def make_case(name: str) -> Case:
     sigma = float(np.abs(head[np.abs(head) > 0.1]).mean() / SNR)
     axes = tuple(range(-images.ndim + 1, 0))
     per_coil = images[:, None] if maps is None else images[:, None] * maps
-    data = to_kspace(per_coil, axes)
+    data: Any = to_kspace(per_coil, axes)
     data = data + sigma * (rng.normal(size=data.shape) + 1j * rng.normal(size=data.shape))
     data = (data * mask).astype(np.complex64)
     return Case(title, images, mask, maps, 3 if name == "volume" else 4, 2 * sigma, data)
@@ -100,7 +101,7 @@ def plain_fista(
         per_coil = x[None] if maps is None else maps * x
         return mask * scipy.fft.fftn(per_coil, axes=axes, norm="ortho", workers=threads)
 
-    def adjoint(k):
+    def adjoint(k) -> Any:
         per_coil = scipy.fft.ifftn(k * mask, axes=axes, norm="ortho", workers=threads)
         return per_coil[0] if maps is None else np.sum(np.conj(maps) * per_coil, axis=0)
 
@@ -114,7 +115,7 @@ def plain_fista(
         c = [shrink(c[0], t)] + [{k: shrink(v, t) for k, v in d.items()} for d in c[1:]]
         return scipy.fft.ifftshift(pywt.waverecn(c, WAVELET, "periodization"), axes=axes)
 
-    x = adjoint(y)
+    x: Any = adjoint(y)
     if maps is not None:
         x = x / np.sum(np.abs(maps) ** 2, axis=0)
     z, t = x, 1.0

@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 from scipy.ndimage import binary_erosion
 from skimage.data import shepp_logan_phantom as picture_of_scikit_image
+
 from skipline.phantoms import Ellipse, Phantom, shepp_logan_high_contrast_phantom, shepp_logan_phantom
 
 

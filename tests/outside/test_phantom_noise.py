@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+
 from skipline.phantoms import acquire, complex_noise
 
 

@@ -5,6 +5,7 @@ from fractions import Fraction
 import numpy as np
 import pytest
 from scipy.special import j1
+
 from skipline.phantoms import Ellipse, Phantom, Polygon, Rectangle
 
 # M. Abramowitz, I. A. Stegun, Handbook of Mathematical Functions, table 9.1: x, J1(x). From memory.

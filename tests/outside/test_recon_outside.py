@@ -89,10 +89,10 @@ def test_l1_minimiser_is_that_of_the_lasso(solver):
     problem = Problem(A, A.encode(y), WaveletL1(W, weight))
     solution = solve(problem, solver)
     F = dense(A, shape, 1) @ np.conj(matrix_of(W, shape)).T
-    X, b = np.concatenate([F.real, F.imag]), np.concatenate([y.ravel().real, y.ravel().imag])
+    X, b = (np.concatenate([np.real(a), np.imag(a)]) for a in (F, y.ravel()))
     lasso = Lasso(alpha=weight / len(b), fit_intercept=False, tol=1e-14, max_iter=200000).fit(X, b)
     expected = W.inverse(lasso.coef_.reshape(shape).astype(complex))
-    assert np.abs(solution.x.imag).max() < 1e-8
+    assert np.abs(np.imag(solution.x)).max() < 1e-8
     assert problem.objective(solution.x) <= problem.objective(expected) * (1 + 1e-9)
     np.testing.assert_allclose(A.forward(solution.x), A.forward(expected), atol=1e-5)
 
@@ -187,7 +187,7 @@ def test_a_million_pixels_from_fifty_thousand_samples():
     y = A.encode(A.forward(x))
     pixels = WaveletTransform(shape, "haar", 0, (1, 2), team=team)
     largest = float(np.abs(A.backproject(y)).max())
-    estimate = None
+    estimate = np.zeros(shape, np.complex64)
     for weight in largest * 10.0 ** np.arange(-0.5, -5, -0.5):
         problem = Problem(A, y, WaveletL1(pixels, weight))
         estimate = solve(problem, Fista(400, min(1e-4, 0.003 * weight / largest)), estimate).x
@@ -196,20 +196,20 @@ def test_a_million_pixels_from_fifty_thousand_samples():
 
 @pytest.fixture(scope="module")
 def brain():
-    """The T1 brain template that the nilearn wheel ships (ICBM 152 2009), the middle forty slices."""
+    """The T1 brain template that the nilearn wheel ships (ICBM 152 2009)."""
     from importlib import resources
 
     import nibabel as nib
 
     data = resources.files("nilearn.datasets.data")
     with resources.as_file(data / "mni_icbm152_t1_tal_nlin_sym_09a_converted.nii.gz") as path:
-        volume = np.asanyarray(nib.load(path).dataobj)
-    return volume[:, :, 75:115].astype(np.complex64)
+        volume = np.asanyarray(nib.load(path).dataobj)  # type: ignore[attr-defined]
+    return volume.astype(np.complex64)
 
 
 @pytest.mark.parametrize(
     ("kind", "acceleration"),
-    [("lines", 2), ("lines", 3), ("lines", 4), ("points", 2), ("points", 4), ("points", 6), ("points", 8)],
+    [("lines", 2), ("lines", 3), ("lines", 4), ("points", 2), ("points", 4), ("points", 6)],
 )
 def test_sparse_beats_zero_filled_on_a_brain(brain, kind, acceleration):
     """Source of the object: the nilearn wheel. Lines in one slice, points of ky-kz in the volume."""
@@ -219,11 +219,11 @@ def test_sparse_beats_zero_filled_on_a_brain(brain, kind, acceleration):
 
     rng = np.random.default_rng(7)
     if kind == "lines":
-        truth = brain[:, :, 20:21]
+        truth = brain[:, :, 94:95]
         mask = VariableDensityLines().draw(Grid((truth.shape[1],), 16), acceleration, rng)[None, :, None]
     else:
         truth = brain
-        mask = VariableDensityPoints().draw(Grid(truth.shape[1:], 16), acceleration, rng)[None]
+        mask = VariableDensityPoints().draw(Grid(truth.shape[1:], 24), acceleration, rng)[None]
     sigma = sigma_for_snr(truth, 30)
     data = Acquired(acquire(to_kspace(truth[None]), mask, sigma, rng), mask, sigma=sigma)
     inside = support(truth)

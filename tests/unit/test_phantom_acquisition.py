@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from skipline import InputError
 from skipline.phantoms import acquire, complex_noise, shepp_logan_phantom, sigma_for_snr, support
 

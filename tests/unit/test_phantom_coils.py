@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+
 from skipline import InputError
 from skipline.phantoms import CoilArray, ring_array
 

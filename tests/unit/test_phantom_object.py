@@ -5,6 +5,7 @@ import sys
 
 import numpy as np
 import pytest
+
 from skipline import InputError
 from skipline.phantoms import (
     CoilArray,

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from skipline import InputError
 from skipline.phantoms import Ellipse, Polygon, Rectangle
 

@@ -248,6 +248,10 @@ def test_images(study_file, tmp_path, monkeypatch):
     (tmp_path / "moved.nii.gz").write_bytes((tmp_path / "brain.nii.gz").read_bytes())
     moved = load_study(study_file, [f"reference.image={tmp_path / 'moved.nii.gz'}"]).cases()[0]
     assert moved.id == case.id, "a file that is moved is the same file"
+    nib.save(nib.Nifti1Image(2 * data, np.eye(4)), tmp_path / "moved.nii.gz")
+    other = load_study(study_file, [f"reference.image={tmp_path / 'moved.nii.gz'}"]).cases()[0]
+    assert other.id != case.id, "a file that is changed is another"
+    assert other.reference_id != case.reference_id
 
     assert load_study(study_file, ["reference.slices=[2, 4]"]).cases()[0].id != case.id
     assert "outside the volume" in refusal(study_file, "reference.slices=[2, 6]")

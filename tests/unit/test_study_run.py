@@ -12,7 +12,7 @@ import pytest
 
 from skipline import CAUTION, InputError
 from skipline.recon.study import estimate, load_study, run, runner
-from skipline.recon.study.evaluate import evaluate
+from skipline.recon.study.evaluate import evaluate, prepared_for
 from skipline.recon.study.references import prepare
 
 STUDY = """\
@@ -176,15 +176,18 @@ def test_without_noise_undersampled_data_are_regularised_still(study_file):
     assert sparse["convergence"]["sigma_source"] != "given"
 
 
-def test_the_snr_is_that_of_the_combined_image(study_file):
+def test_the_snr_is_that_of_the_combined_image(study_file, tmp_path):
     """Of the fully sampled image of a case, one coil or many, given maps of any scale."""
-    for coils in (1, 6):
-        overrides = ["sampling.acceleration=1", f"acquisition.coils={coils}", "acquisition.snr=20"]
+    nib.save(
+        nib.Nifti1Image(np.full((64, 48, 1, 1, 2), 3j, np.complex64), np.eye(4)), tmp_path / "maps.nii.gz"
+    )
+    for array in ("coils=1", "coils=6", f"maps={tmp_path / 'maps.nii.gz'}"):
+        overrides = ["sampling.acceleration=1", f"acquisition.{array}", "acquisition.snr=20"]
         case = load_study(study_file, overrides).cases()[0]
-        prepared = prepare(case.reference, coils, None)
+        prepared = prepared_for(case)
         noise = (evaluate(case).image - prepared.image)[prepared.support]
         measured = np.abs(prepared.image[prepared.support]).mean() / np.real(noise).std()
-        assert measured == pytest.approx(20, rel=0.1)
+        assert measured == pytest.approx(20, rel=0.1), array
 
 
 def test_given_maps(study_file, tmp_path):
@@ -246,6 +249,19 @@ def test_a_failing_case_stops_no_other(study_file, tmp_path, monkeypatch):
     assert outcome.verdict["failed"][0]["id"] == bad
     monkeypatch.undo()
     assert run(study, tmp_path / "results", workers=1, progress=False).done == 1
+
+
+def test_a_full_disk_leaves_no_half_of_a_case(study_file, tmp_path, monkeypatch):
+    def full(path, content):
+        raise InputError(f"{path} cannot be written (No space left on device)")
+
+    monkeypatch.setattr(runner.results, "write_json", full)
+    outcome = run(
+        load_study(study_file, ["sampling.acceleration=2"]), tmp_path / "results", 1, progress=False
+    )
+    assert all("No space left" in failure.message for failure in outcome.failed)
+    assert len(outcome.failed) == 2
+    assert not list((tmp_path / "results" / "cases").iterdir())
 
 
 def test_ctrl_c_in_this_process(study_file, tmp_path, monkeypatch):
@@ -339,6 +355,8 @@ def test_processes_and_ctrl_c(study_file, tmp_path):
     while time.monotonic() < end and process.poll() is None and len(list(cases.glob("*/case.json"))) < 4:
         time.sleep(0.01)
     process.send_signal(signal.SIGINT)
+    time.sleep(0.05)
+    process.send_signal(signal.SIGINT)  # the impatient press it twice
     _, stderr = process.communicate(timeout=30)
     assert stderr.startswith("130 stopped; "), stderr
     assert "Traceback" not in stderr
