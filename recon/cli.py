@@ -72,8 +72,10 @@ def run_command(arguments: list[str]) -> int:
         return int(app(arguments, prog_name="skipline", standalone_mode=False) or 0)
     except InputError as error:
         return _complain(str(error), 2)
-    except (KeyboardInterrupt, typer.Abort) as error:
-        return _complain(str(error) or "stopped", 1)
+    except _Failed as error:
+        return _complain(str(error), 1)
+    except (KeyboardInterrupt, typer.Abort):
+        return _complain("stopped", 1)
     except BrokenPipeError:
         # whoever read our output has gone: that is no failure, but nothing more may be written
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
@@ -128,12 +130,16 @@ def run(
     from .study import run as run_study
 
     folder = Path("results") / loaded.name if output is None else output
-    outcome = run_study(loaded, folder, workers)
+    try:
+        outcome = run_study(loaded, folder, workers)
+    except KeyboardInterrupt as stop:
+        # caught here, because the command-line library would end without a word
+        raise _Failed(str(stop) or "stopped") from None
     report = write_report(folder)
     print(_counted(outcome))
     print(outcome.verdict["sentence"])
-    if outcome.verdict.get("reason"):
-        print(outcome.verdict["reason"])
+    for warning in outcome.verdict["warnings"]:
+        print(f"skipline: warning: {warning}", file=sys.stderr)
     print(f"report: {report}")
     if outcome.failed:
         first = outcome.failed[0]
@@ -141,10 +147,7 @@ def run(
 
 
 class _Failed(Exception):
-    """The work was done in part; the message says what failed."""
-
-    def format_message(self) -> str:
-        return str(self)
+    """The work was done in part, or not at all; the message says why."""
 
 
 @app.command(epilog="Example: [bold]skipline check first-study --workers 4[/bold]")

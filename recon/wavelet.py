@@ -2,19 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from functools import cache
 
 import numpy as np
 
-from .. import InputError
 from . import filterbank
 from .precision import real_type
 from .team import Team
 from .wavelet_filters import analysis_filters
-
-COARSEST_SAMPLES = 8
-"""By default an axis is halved as long as at least this many samples remain."""
+from .wavelet_levels import check_levels
 
 
 @cache
@@ -26,20 +22,6 @@ def _padded_filters(name: str, dtype: np.dtype) -> tuple[np.ndarray, np.ndarray,
     g = np.pad(high.astype(dtype), padding)
     even, odd = (np.stack([h[parity::2], g[parity::2]], axis=1).ravel() for parity in (0, 1))
     return h, g, even, odd, 1 - low.size // 2
-
-
-def default_levels(lengths: Sequence[int]) -> int:
-    """Return the number of levels that leaves at least `COARSEST_SAMPLES` samples on the shortest axis.
-
-    Examples
-    --------
-    >>> default_levels([256, 256]), default_levels([181, 217, 181]), default_levels([12])
-    (5, 4, 0)
-    """
-    shortest, levels = min(lengths), 0
-    while (shortest := (shortest + 1) // 2) >= COARSEST_SAMPLES:
-        levels += 1
-    return levels
 
 
 class WaveletTransform:
@@ -101,14 +83,7 @@ class WaveletTransform:
         self.part = np.dtype(real_type(dtype))
         # Rows are taken apart sample by sample; a complex64 moves fastest as one 8-byte number.
         self._carrier = np.dtype(np.float64) if self.dtype == np.complex64 else self.dtype
-        lengths = [shape[axis] for axis in self.axes]
-        possible = int(np.ceil(np.log2(min(lengths)))) if min(lengths) > 1 else 0
-        self.levels = default_levels(lengths) if levels is None else levels
-        if self.levels > possible:
-            raise InputError(
-                f"{self.levels} wavelet levels asked for, but the shortest axis has {min(lengths)} samples: "
-                f"at most {possible}"
-            )
+        self.levels = check_levels(levels, [shape[axis] for axis in self.axes])
         self._h, self._g, self._even, self._odd, self._shift = _padded_filters(wavelet, self.part)
         self.team = team or Team()
         self._boxes = [tuple(shape)]

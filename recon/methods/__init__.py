@@ -14,7 +14,8 @@ class Method(Protocol):
     """What a reconstruction method offers; its options are the fields of a pydantic model.
 
     A class that inherits `pydantic.BaseModel`, with the options as fields, a `name`, a docstring whose first
-    line says what it does, and `reconstruct` is a method.
+    line says what it does, and `reconstruct` is a method. One that cannot work on every image has also
+    ``check(shape)``, which raises `InputError`; it is asked before a study starts.
     """
 
     name: ClassVar[str]

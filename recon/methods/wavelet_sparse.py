@@ -74,6 +74,12 @@ class WaveletSparse(BaseModel):
 
         return check_orthogonal(name)
 
+    def check(self, shape: tuple[int, int, int]) -> None:
+        """Refuse, before any work, an image that the options do not fit."""
+        from ..wavelet_levels import check_levels
+
+        check_levels(self.levels, shape if self.wavelet_axes == "xyz" and shape[2] > 1 else shape[:2])
+
     def reconstruct(self, data: Acquired, threads: int = 1) -> Reconstruction:
         """Return the image of the acquired data."""
         import numpy as np

@@ -47,7 +47,8 @@ def summary_table(findings: Findings) -> Table | None:
         return None
     settings = columns[: columns.index(f"{measures[0]}_mean")]
     limits = {name: Limit(**limit) for name, limit in findings.verdict["limits"].items()}
-    varying, constants = [], []
+    varying: list[str] = []
+    constants: list[str] = []
     options = False
     for name in settings:
         values = dict.fromkeys(row[name] for row in rows)

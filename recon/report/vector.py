@@ -63,7 +63,7 @@ def inline_svg(build: Callable[[], Figure], name: str, description: str) -> str:
     content = svg[svg.index(">", svg.index("<svg")) + 1 :]
     content = re.sub(r"<metadata>.*?</metadata>\s*", "", content, flags=re.DOTALL)
     # Matplotlib numbers its groups; those of two figures in one page would have the same id
-    content = re.sub(r'<g id="[^"]*">', "<g>", content)
+    content = re.sub(r'<g id="[^"]*"', "<g", content)
     for colour, custom_property in THEME.items():
         content = content.replace(colour, f"var({custom_property})")
     return f'<svg role="img" aria-label="{escape(description)}" viewBox="{view_box[1]}">{content}'.strip()

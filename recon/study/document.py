@@ -16,6 +16,7 @@ from pathlib import Path
 from typing import Any
 
 from ... import InputError
+from ..options import parse_value
 
 Keys = tuple[str | int, ...]
 """The way to a value: ``("reconstruction", 1, "weight")``."""
@@ -188,21 +189,12 @@ def _override(values: dict[str, Any], overrides: Iterable[str]) -> tuple[dict[st
         if not equals or not name or any(not part for part in name.split(".")):
             raise InputError(f"--set {override}: expected key=value, for example sampling.acceleration=4")
         keys: Keys = tuple(int(part) if part.isdigit() else part for part in name.split("."))
-        value = _value(text)
+        value = parse_value(text)
         if keys in PATHS:
             value = _absolute(value, Path.cwd())
         _put(values, keys, value)
         overridden.add(keys)
     return values, frozenset(overridden)
-
-
-def _value(text: str) -> Any:
-    """Return a TOML value, or the text itself: nobody should have to quote quotes in a shell."""
-    try:
-        parsed = tomllib.loads(f"value = {text}")
-    except tomllib.TOMLDecodeError:
-        return text
-    return parsed["value"] if parsed.keys() == {"value"} else text
 
 
 def _put(values: dict[str, Any], keys: Keys, value: Any) -> None:

@@ -132,9 +132,10 @@ def load_study(path: str | Path, overrides: Iterable[str] = ()) -> Study:
             ("acquisition", "noise_draws"), "there is no noise to draw; give an snr as well"
         )
     samplings = _named(document, ("sampling",), "patterns", "pattern", Sampling)
+    tables = range(len(document.values["reconstruction"]))
     methods = [
-        method
-        for i in range(len(document.values["reconstruction"]))
+        (i, *method)
+        for i in tables
         for method in _named(document, ("reconstruction", i), "methods", "method")
     ]
     limits = _limits(document)
@@ -142,7 +143,11 @@ def load_study(path: str | Path, overrides: Iterable[str] = ()) -> Study:
         _setting(document, reference, acquisition, samplings)
         for reference, acquisition in product(found_references, acquisitions)
     )
-    named_methods = tuple((name, options) for name, _, options in methods)
+    for setting, (i, _, _, options) in product(settings, methods):
+        check = getattr(options, "check", None)
+        if check is not None:
+            _placed(document, ("reconstruction", i), check, references.shape(setting.reference))
+    named_methods = tuple((name, options) for _, name, _, options in methods)
     return Study(about, settings, named_methods, limits, document)
 
 

@@ -5,9 +5,10 @@ from hypothesis import strategies as st
 
 from skipline import InputError
 from skipline.recon.team import Team
-from skipline.recon.wavelet import WaveletTransform, default_levels
+from skipline.recon.wavelet import WaveletTransform
 from skipline.recon.wavelet_filters import orthogonal_wavelets
 from skipline.recon.wavelet_l1 import WaveletL1
+from skipline.recon.wavelet_levels import default_levels
 
 WAVELETS = st.sampled_from(["haar", "db2", "db3", "db4", "db7", "sym5", "sym8", "coif1", "coif3", "db20"])
 DTYPES = st.sampled_from([np.complex64, np.complex128, np.float32, np.float64])

@@ -1,0 +1,241 @@
+"""The command line: every command for real, and every bad input in one line with exit code 2."""
+
+import json
+import os
+import signal
+import subprocess
+import sys
+import time
+from pathlib import Path
+
+import jsonschema
+import nibabel as nib
+import numpy as np
+import pytest
+
+from skipline.recon.cli import run_command
+from skipline.recon.files import read_volume, write_volume
+
+CONFIGS = Path(__file__).parents[2] / "configs"
+SMALL = [
+    "--set", "reference.matrix=[64, 64]", "--set", "sampling.calibration=8", "--set", "sampling.draws=1",
+    "--set", "sampling.acceleration=[2, 3]",
+]  # fmt: skip
+
+
+@pytest.fixture
+def refused(capsys):
+    """Run a command that must be refused; return its one line."""
+
+    def run(*arguments, code=2):
+        capsys.readouterr()
+        assert run_command([str(a) for a in arguments]) == code
+        captured = capsys.readouterr()
+        assert captured.out == ""
+        lines = captured.err.splitlines()
+        assert len(lines) == 1
+        assert lines[0].startswith("skipline: ")
+        return lines[0]
+
+    return run
+
+
+@pytest.fixture
+def scan(tmp_path):
+    """A phantom's image, k-space and maps of four coils, and a mask, as files."""
+    files = {name: tmp_path / f"{name}.nii.gz" for name in ("image", "kspace", "maps", "mask")}
+    assert (
+        run_command(
+            f"phantom shepp-logan --output {files['image']} --matrix 64,48 --coils 4 --snr 50 "
+            f"--kspace {files['kspace']} --maps {files['maps']}".split()
+        )
+        == 0
+    )
+    line = f"mask variable-density-lines --output {files['mask']} --like {files['kspace']} --acceleration 2"
+    assert run_command([*line.split(), "--calibration", "12", "--option", "power=1.5"]) == 0
+    return files
+
+
+def test_phantom_mask_recon_compare(scan, tmp_path, capsys):
+    out = tmp_path / "sparse.nii.gz"
+    line = f"recon {scan['kspace']} {scan['mask']} --output {out} --maps {scan['maps']} --option weight=1"
+    assert run_command(line.split()) == 0
+    for path, shape in ((out, (64, 48, 1)), (scan["kspace"], (64, 48, 1, 1, 4)), (scan["mask"], (64, 48, 1))):
+        image = nib.load(path)
+        assert image.shape == shape
+        np.testing.assert_allclose(image.affine, nib.load(scan["image"]).affine)
+    sidecar = json.loads((tmp_path / "sparse.json").read_text())
+    assert sidecar["Converged"] is True
+    assert sidecar["SigmaSource"] == "k-space border"
+    assert "not for diagnosis" in sidecar["Caution"]
+    capsys.readouterr()
+    assert (
+        run_command(["compare", str(scan["image"]), str(out), "--json", "--error", str(tmp_path / "e.nii")])
+        == 0
+    )
+    found = json.loads(capsys.readouterr().out)
+    assert 0 < found["nrmse"] < 0.2
+    assert found["ssim"] > 0.7
+    assert read_volume(tmp_path / "e.nii").data.shape == (64, 48, 1)
+
+
+def test_recon_of_a_fully_sampled_scan_is_the_image(scan, tmp_path):
+    full = tmp_path / "full.nii.gz"
+    source = read_volume(scan["kspace"])
+    write_volume(full, np.ones((64, 48, 1), bool), source.affine, content="mask")
+    out = tmp_path / "out.nii.gz"
+    line = f"recon {scan['kspace']} {full} --output {out} --maps {scan['maps']} --method zero-filled"
+    assert run_command(line.split()) == 0
+    np.testing.assert_allclose(read_volume(out).data, read_volume(scan["image"]).data, atol=1e-5)
+
+
+def test_run_check_and_run_again(tmp_path, capsys):
+    folder = tmp_path / "results"
+    assert run_command(["check", "first-study", *SMALL]) == 0
+    assert "8 cases" in capsys.readouterr().out
+    assert run_command(["run", "first-study", "--output", str(folder), "--workers", "1", *SMALL]) == 0
+    first = capsys.readouterr().out
+    assert "8 cases done" in first
+    assert "R = " in first
+    for name in ("study.toml", "verdict.json", "cases.csv", "summary.csv", "report.html", "cases"):
+        assert (folder / name).exists(), name
+    before = {p: p.stat().st_mtime_ns for p in folder.glob("cases/*/*")}
+    assert run_command(["run", "first-study", "--output", str(folder), *SMALL]) == 0
+    assert "0 cases done, 8 were finished before" in capsys.readouterr().out
+    assert before == {p: p.stat().st_mtime_ns for p in folder.glob("cases/*/*")}
+
+
+def test_schema_accepts_the_ready_studies(capsys):
+    import tomllib
+
+    assert run_command(["schema"]) == 0
+    schema = json.loads(capsys.readouterr().out)
+    for file in CONFIGS.glob("*.toml"):
+        values = tomllib.loads(file.read_text())
+        if file.stem == "volume-study":
+            values["reference"]["image"] = "volume.nii.gz"
+        jsonschema.validate(values, schema)
+    with pytest.raises(jsonschema.ValidationError):
+        jsonschema.validate(values | {"sampling": {"pattern": "circles"}}, schema)
+
+
+def test_list_names_everything(capsys):
+    assert run_command(["list"]) == 0
+    listed = capsys.readouterr().out
+    for name in (
+        "variable-density-points",
+        "line-pair-slab",
+        "wavelet-sparse",
+        "ssim_overall",
+        "penalise_coarsest",
+    ):
+        assert name in listed
+
+
+@pytest.mark.parametrize("command", ["run", "check", "phantom", "mask", "recon", "compare", "list", "schema"])
+def test_help_has_an_example(command, capsys):
+    assert run_command([command, "--help"]) == 0
+    assert "Example: skipline " + command in " ".join(capsys.readouterr().out.split())
+
+
+@pytest.mark.parametrize(
+    ("overrides", "message"),
+    [
+        (["sampling.aceleration=2"], 'did you mean "acceleration"'),
+        (["sampling.acceleration=fast"], "expected a number"),
+        (["sampling.acceleration=0.5"], "at least 1"),
+        (["sampling.acceleration=100"], "at most"),
+        (["sampling.calibration=100"], "calibration"),
+        (["reference.phantom=line-pair-slb"], 'did you mean "line-pair-slab"'),
+        (["sampling.pattern=regular"], "regular-lines"),
+        (["reconstruction.1.wavelet=db44"], "did you mean 'db4"),
+        (["reconstruction.1.weight=-1"], "at least 0"),
+        (["limits.nrms.at_most=1"], 'did you mean "nrmse"'),
+        (["acquisition.snr=-3"], "more than 0"),
+    ],
+)
+@pytest.mark.parametrize("command", ["check", "run"])
+def test_a_study_that_cannot_be_run(refused, tmp_path, command, overrides, message):
+    where = ["--output", tmp_path / "out"] if command == "run" else []
+    settings = [part for override in overrides for part in ("--set", override)]
+    assert message in refused(command, "first-study", *where, *SMALL, *settings)
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_studies_and_files_that_are_not_there(refused, tmp_path):
+    assert "the ready ones are: first-study" in refused("run", "first")
+    assert "no such study file" in refused("check", tmp_path / "none.toml")
+    (tmp_path / "broken.toml").write_text("[study\n")
+    assert "broken.toml, line 1" in refused("check", tmp_path / "broken.toml")
+    assert "reference" in refused("run", "volume-study", "--output", tmp_path / "out")
+    missing = tmp_path / "none.nii.gz"
+    assert "does not exist" in refused("run", "volume-study", "--set", f"reference.image={missing}")
+    assert not (tmp_path / "out").exists()
+
+
+def test_files_that_cannot_be_used(refused, scan, tmp_path):
+    out = tmp_path / "out.nii.gz"
+    recon = ["recon", scan["kspace"], scan["mask"], "--output", out]
+    assert "no coil maps" in refused(*recon)
+    assert "expected complex" in refused("recon", scan["mask"], scan["mask"], "--output", out)
+    affine = np.eye(4)
+    for name, data, message in (
+        ("empty", np.zeros((64, 48, 1), bool), "mask is empty"),
+        ("small", np.ones((32, 48, 1), bool), "expected the same grid"),
+    ):
+        write_volume(tmp_path / f"{name}.nii", data, affine, content="mask")
+        line = ["recon", scan["kspace"], tmp_path / f"{name}.nii", "--maps", scan["maps"], "--output", out]
+        assert message in refused(*line)
+    truncated = tmp_path / "truncated.nii.gz"
+    truncated.write_bytes(scan["kspace"].read_bytes()[:2000])
+    assert "truncated" in refused("recon", truncated, scan["mask"], "--output", out)
+    text = tmp_path / "text.nii"
+    text.write_text("not an image")
+    assert "not NIfTI" in refused("compare", text, scan["image"])
+    bad = np.ones((64, 48, 1), np.float32)
+    bad[3, 3] = np.nan
+    nib.save(nib.Nifti1Image(bad, affine), tmp_path / "nan.nii")
+    assert "NaN" in refused("compare", tmp_path / "nan.nii", scan["image"])
+    nib.save(nib.Nifti1Image(np.zeros_like(bad), affine), tmp_path / "zero.nii")
+    assert "zero everywhere" in refused("compare", tmp_path / "zero.nii", scan["image"])
+    assert "different places" in refused("compare", scan["image"], tmp_path / "zero.nii")
+    option = ["--maps", scan["maps"], "--option", "weigth=2"]
+    assert 'did you mean "weight"' in refused(*recon, *option)
+    assert not out.exists()
+
+
+def test_folders_that_cannot_be_used(refused, tmp_path):
+    assert run_command(["run", "first-study", "--output", str(tmp_path / "a"), *SMALL]) == 0
+    assert "another study" in refused("run", "multi-coil-study", "--output", tmp_path / "a")
+    (tmp_path / "file").write_text("")
+    assert str(tmp_path / "file") in refused("run", "first-study", "--output", tmp_path / "file" / "b")
+
+
+def test_usage_errors_are_one_line(refused):
+    assert "did you mean" in refused("runn").lower()
+    assert "--outptu" in refused("run", "first-study", "--outptu", "x")
+
+
+def test_ctrl_c_keeps_what_is_finished(tmp_path):
+    """A real process, a real signal; then the same command goes on."""
+    folder = tmp_path / "out"
+    command = [
+        sys.executable, "-c", "from skipline.recon.cli import main; main()", "run", "first-study",
+        "--output", str(folder), "--set", "reference.matrix=[128, 128]", "--workers", "2",
+    ]  # fmt: skip
+    process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
+    deadline = time.monotonic() + 60
+    while len(list(folder.glob("cases/*/case.json"))) < 3 and time.monotonic() < deadline:
+        time.sleep(0.05)
+    os.kill(process.pid, signal.SIGINT)
+    _, err = process.communicate(timeout=60)
+    assert process.returncode == 1
+    assert err.count("\n") == 1
+    assert "cases are finished and kept" in err
+    kept = {path.parent for path in folder.glob("cases/*/case.json")}
+    assert 3 <= len(kept) < 60
+    assert not list(folder.rglob("*.tmp*"))
+    assert all((case / "image.nii.gz").exists() for case in kept)
+    done = subprocess.run(command, capture_output=True, text=True, timeout=120)
+    assert done.returncode == 0, done.stderr
+    assert f"{60 - len(kept)} cases done, {len(kept)} were finished before" in done.stdout
