@@ -110,7 +110,7 @@ class DrawnPanel:
 
 @dataclass(frozen=True)
 class Profile:
-    """The share of samples that a mask takes at each place of its phase-encode axis."""
+    """How many samples a mask takes at each place of its phase-encode axis, relative to the most."""
 
     shares: list[float]
     says: str
@@ -183,5 +183,9 @@ def _profile(findings: Findings) -> Profile | None:
     if case is None or found is None:
         return None
     axis, shares = found
+    darkest = max(shares)
     pattern = case.settings["pattern"]
-    return Profile(shares, f"samples along phase encode {axis}: {pattern}, R = {number(case.acceleration)}")
+    return Profile(
+        [round(share / darkest, 3) for share in shares],
+        f"samples along phase encode {axis}: {pattern}, R = {number(case.acceleration)}",
+    )

@@ -3,19 +3,15 @@
 from __future__ import annotations
 
 import base64
-import io
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import TYPE_CHECKING
 
 import numpy as np
 
+from .png import palette_png
 from .wording import nice_below, number
 
-if TYPE_CHECKING:
-    from matplotlib.colors import Colormap
-
-GREY = "gray"
+GREY = "grey"
 ERROR = "error"
 SAMPLES = "samples"
 
@@ -65,8 +61,11 @@ def picture(values: np.ndarray, low: float, high: float, colours: str, voxel: tu
     ('data:image/png;base64,', 0.5)
     """
     aspect = values.shape[0] * voxel[0] / (values.shape[1] * voxel[1])
+    shares = (np.asarray(values, float) - low) / (high - low)
+    levels = np.clip(np.round(255 * shares), 0, 255).astype(np.uint8)
     # rows of an image go down
-    return Picture(_png(np.asarray(values, float).T[::-1], low, high, _colours(colours)), aspect)
+    encoded = base64.b64encode(palette_png(levels.T[::-1], _palette(colours))).decode()
+    return Picture(f"data:image/png;base64,{encoded}", aspect)
 
 
 def colour_bar(colours: str) -> Picture:
@@ -92,24 +91,16 @@ def scale_bar(width_mm: float) -> ScaleBar:
     return ScaleBar(f"{number(length)} mm", round(100 * length / width_mm, 2))
 
 
-def _png(values: np.ndarray, low: float, high: float, colours: Colormap) -> str:
-    from matplotlib.image import imsave
-
-    out = io.BytesIO()
-    options = {"metadata": {"Software": None}, "pil_kwargs": {"optimize": True}}
-    imsave(out, values, vmin=low, vmax=high, cmap=colours, format="png", **options)
-    return "data:image/png;base64," + base64.b64encode(out.getvalue()).decode()
-
-
 @lru_cache
-def _colours(name: str) -> Colormap:
+def _palette(name: str) -> np.ndarray:
     from matplotlib import colormaps
     from matplotlib.colors import LinearSegmentedColormap
 
+    colours = colormaps["gray"]
     if name == ERROR:
         # dark at zero, as the surroundings are; blue and orange are told apart by all, and equally light
         stops = ["#d6f1ff", "#5db3ea", "#1c5d92", "#0d0f12", "#8f4a06", "#ee9536", "#ffeacb"]
-        return LinearSegmentedColormap.from_list(name, stops)
-    if name == SAMPLES:
-        return LinearSegmentedColormap.from_list(name, ["#14181c", "#f4f1e8"])
-    return colormaps[GREY]
+        colours = LinearSegmentedColormap.from_list(name, stops)
+    elif name == SAMPLES:
+        colours = LinearSegmentedColormap.from_list(name, ["#14181c", "#f4f1e8"])
+    return colours(np.arange(256) / 255, bytes=True)[:, :3]

@@ -10,6 +10,7 @@ from statistics import median
 from typing import Any
 
 from ... import __version__
+from ..study.machine import cores
 from .findings import Findings, Finished
 from .wording import counted, duration, number
 
@@ -77,8 +78,8 @@ def _facts(findings: Findings) -> list[tuple[str, str]]:
         ),
         (
             "Report written by",
-            f"skipline {__version__} on {platform.system()} {platform.machine()}, "
-            f"Python {platform.python_version()}",
+            f"skipline {__version__}, Python {platform.python_version()}, on {platform.system()} "
+            f"{platform.machine()}, {counted(cores(), 'core')}",
         ),
     ]
 

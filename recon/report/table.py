@@ -36,7 +36,7 @@ def summary_table(findings: Findings) -> Table | None:
     """Return the means of `summary.csv`; None when it has none.
 
     A setting with one value is told above the table. So is an option that only some methods or patterns
-    have, when those agree.
+    have, when those agree, and one that follows from the pattern.
     """
     rows = findings.summary
     if not rows:
@@ -55,26 +55,35 @@ def summary_table(findings: Findings) -> Table | None:
         if options:
             # of an option, blank says that the pattern or the method has none; before, it is a value
             values.pop("", None)
-        options = options or name == "pattern"
-        if name in _ALWAYS or len(values) > 1:
-            varying.append(name)
-        else:
+        if name not in _ALWAYS and len(values) <= 1:
             constants += [f"{name} {value}" for value in values if value]
+        elif options and name not in _ALWAYS and (by_pattern := _by_pattern(rows, name)):
+            constants.append(f"{name} {by_pattern}")
+        else:
+            varying.append(name)
+        options = options or name == "pattern"
     heads = [Cell(_SHORT.get(name, name), numeric=_numeric(rows, name)) for name in varying]
     heads += [Cell(name, numeric=True) for name in measures]
-    heads += [Cell(name, numeric=True) for name in ("n", "seconds", "not converged", "failed")]
+    troubles = [name for name in ("not_converged", "failed") if any(row[name] != "0" for row in rows)]
+    ends = ("n", "seconds", *(name.replace("_", " ") for name in troubles))
+    heads += [Cell(name, numeric=True) for name in ends]
     body = []
     for row in rows:
         cells = [Cell(row[name] or "–", numeric=_numeric(rows, name)) for name in varying]
         cells += [_mean(row, name, limits.get(name)) for name in measures]
-        cells += [
-            Cell(row[f"{measures[0]}_n"], numeric=True),
-            Cell(number(row["seconds_mean"] or None, 3), numeric=True),
-            _count(row["not_converged"]),
-            _count(row["failed"]),
-        ]
+        cells.append(Cell(row[f"{measures[0]}_n"], numeric=True))
+        cells.append(Cell(number(row["seconds_mean"] or None, 3), numeric=True))
+        cells += [_count(row[name]) for name in troubles]
         body.append(tuple(cells))
     return Table(", ".join(constants), tuple(heads), tuple(body))
+
+
+def _by_pattern(rows: Sequence[Mapping[str, str]], name: str) -> str:
+    """Tell the value of an option of each pattern; nothing when some pattern has several."""
+    pairs = list(dict.fromkeys((row["pattern"], row[name]) for row in rows))
+    if len(pairs) > len(dict(pairs)):
+        return ""
+    return ", ".join(f"{value or 'none'} of {pattern}" for pattern, value in pairs)
 
 
 def _mean(row: Mapping[str, str], measure: str, limit: Limit | None) -> Cell:

@@ -1,12 +1,16 @@
+import io
 import math
+import zlib
 
 import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from matplotlib.image import imread
 
 from skipline.recon.report.curves import Line, Panel, Style, panel_figure, styles
 from skipline.recon.report.findings import Curve, Statistics
+from skipline.recon.report.png import palette_png
 from skipline.recon.report.selection import choose_rows
 from skipline.recon.report.vector import LIMIT, SERIES, inline_svg
 from skipline.recon.report.wording import nice_above, nice_below, number, with_spread
@@ -143,3 +147,25 @@ def test_spread_has_the_decimals_of_the_mean():
     assert with_spread(0.0, 0.0) == ("0.000", "0.000")
     assert number("inf") == "∞"
     assert number("nan") == "–"
+
+
+@given(
+    data=st.data(),
+    rows=st.integers(1, 9),
+    columns=st.integers(1, 9),
+)
+def test_png_reads_back(data, rows, columns):
+    numbers = data.draw(st.lists(st.integers(0, 255), min_size=rows * columns, max_size=rows * columns))
+    levels = np.array(numbers, np.uint8).reshape(rows, columns)
+    palette = np.random.default_rng(0).integers(0, 256, (256, 3), np.uint8)
+    decoded = imread(io.BytesIO(palette_png(levels, palette)))
+    np.testing.assert_allclose(255 * decoded[..., :3], palette[levels], atol=1e-3)
+
+
+def test_png_of_a_smooth_image_is_filtered():
+    x, y = np.meshgrid(np.arange(400), np.arange(300))
+    levels = ((x * x + 3 * y * y) // 400 % 256).astype(np.uint8)
+    grey = np.arange(256, dtype=np.uint8)[:, None].repeat(3, 1)
+    encoded = palette_png(levels, grey)
+    assert len(encoded) < 0.5 * len(zlib.compress(levels.tobytes(), 9))
+    np.testing.assert_allclose(255 * imread(io.BytesIO(encoded))[..., 0], levels, atol=1e-3)

@@ -329,6 +329,19 @@ def test_the_table_tells_constants_once(results):
     assert not all(row[nrmse].broken for row in table.rows)
 
 
+def test_what_follows_from_the_pattern_has_no_column(tmp_path):
+    patterns = 'sampling.pattern=["variable-density-lines", "variable-density-points"]'
+    found = reading.read_findings(
+        make(tmp_path, [patterns, "sampling.acceleration=2", "sampling.power=[2, 3]"])
+    )
+    table = summary_table(found)
+    assert table is not None
+    heads = [head.text for head in table.heads]
+    assert "phase_encode" not in heads
+    assert "phase_encode y of variable-density-lines, xy of variable-density-points" in table.constants
+    assert "power" in heads
+
+
 def test_noise_and_no_noise_are_two_conditions(tmp_path):
     folder = make(tmp_path, ["acquisition.snr=[30, inf]", "sampling.draws=1", "sampling.acceleration=[1, 2]"])
     page = write_report(folder).read_text()
