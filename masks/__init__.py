@@ -15,9 +15,12 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from .density import inclusion_probabilities, power_law
+    from .bounded_gaps import bounded_gap_draw
+    from .density import adaptive_law, gaussian_law, inclusion_probabilities, power_law, read_law
+    from .fixed_size import fixed_size_draw, grid_probabilities
     from .grid import Grid
     from .lines import RegularLines, VariableDensityLines
+    from .local_pivotal import local_pivotal_draw
     from .pattern import Pattern
     from .pivotal import pivotal_draw
     from .points import VariableDensityPoints
@@ -32,10 +35,17 @@ _MODULE_OF = {
     "VariableDensity": "variable_density",
     "VariableDensityLines": "lines",
     "VariableDensityPoints": "points",
+    "adaptive_law": "density",
+    "bounded_gap_draw": "bounded_gaps",
+    "fixed_size_draw": "fixed_size",
+    "gaussian_law": "density",
+    "grid_probabilities": "fixed_size",
     "inclusion_probabilities": "density",
+    "local_pivotal_draw": "local_pivotal",
     "pivotal_draw": "pivotal",
     "point_spread": "pointspread",
     "power_law": "density",
+    "read_law": "density",
     "sidelobes": "pointspread",
 }
 
@@ -47,10 +57,17 @@ __all__ = [
     "VariableDensity",
     "VariableDensityLines",
     "VariableDensityPoints",
+    "adaptive_law",
+    "bounded_gap_draw",
+    "fixed_size_draw",
+    "gaussian_law",
+    "grid_probabilities",
     "inclusion_probabilities",
+    "local_pivotal_draw",
     "pivotal_draw",
     "point_spread",
     "power_law",
+    "read_law",
     "sidelobes",
 ]
 

@@ -52,7 +52,7 @@ class Pattern(BaseModel, ABC):
         Parameters
         ----------
         grid : Grid
-            The phase-encode grid, with the calibration region; that is always taken.
+            The phase-encode grid, with its constraints; the mask keeps them all.
         acceleration : float
             R: points of the grid / samples taken, calibration region included.
         rng : numpy.random.Generator
@@ -66,9 +66,19 @@ class Pattern(BaseModel, ABC):
         Raises
         ------
         InputError
-            When the grid has another number of axes than the pattern, or cannot give the acceleration.
+            When the grid has another number of axes than the pattern, or cannot give the acceleration, or the
+            pattern cannot keep a constraint at this acceleration; the message says which, and the nearest
+            acceleration at which it can.
         """
-        return self._draw(grid, self._samples(grid, acceleration), rng)
+        samples = self._samples(grid, acceleration)
+        mask = self._draw(grid, samples, rng)
+        broken = grid.broken(mask)
+        if broken is not None:
+            raise InputError(
+                f"{self.name} at acceleration {acceleration:g} collides with {broken}"
+                f"{self._nearest(grid, samples)}"
+            )
+        return mask
 
     @abstractmethod
     def _draw(self, grid: Grid, samples: int, rng: np.random.Generator) -> NDArray[np.bool_]:
@@ -80,3 +90,16 @@ class Pattern(BaseModel, ABC):
             expected = {1: "one phase-encode axis", 2: "two phase-encode axes"}[self.axes]
             raise InputError(f"{self.name}: expected a grid of {expected}, got the shape {grid.shape}")
         return grid.samples(acceleration)
+
+    def _nearest(self, grid: Grid, samples: int) -> str:
+        """Return, in words, the nearest acceleration at which a fixed pattern keeps the constraints."""
+        if self.random:
+            return ""
+        import numpy as np
+
+        rng = np.random.default_rng(0)
+        for n in sorted(grid.counts(), key=lambda n: abs(n - samples)):
+            if grid.broken(self._draw(grid, n, rng)) is None:
+                word = "most" if n > samples else "least"
+                return f": at {word} R = {grid.shown(n)} can be had"
+        return ": it cannot be had at any R"

@@ -50,13 +50,7 @@ def pivotal_draw(probabilities: NDArray[np.float64], rng: np.random.Generator) -
     >>> int(taken.sum()), bool(taken[0]), bool(taken[4])
     (2, True, False)
     """
-    probabilities = np.ascontiguousarray(probabilities, dtype=np.float64)
-    if not ((probabilities >= 0).all() and (probabilities <= 1).all()):
-        raise InputError("inclusion probabilities: expected numbers between 0 and 1")
-    total = float(probabilities.sum())
-    if abs(total - round(total)) > 1e-6:
-        raise InputError(f"inclusion probabilities: expected a sum that is a whole number, got {total:.9g}")
-
+    probabilities = checked(probabilities)
     taken = probabilities == 1
     undecided = np.flatnonzero((probabilities > 0) & ~taken)
     order = rng.permutation(undecided)
@@ -64,6 +58,37 @@ def pivotal_draw(probabilities: NDArray[np.float64], rng: np.random.Generator) -
     uniforms = rng.random(order.size)
     _duels(probabilities.reshape(-1)[order], order, uniforms, taken.reshape(-1))
     return taken
+
+
+def checked(probabilities: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return inclusion probabilities in C order, once a sample of fixed size can have them.
+
+    Parameters
+    ----------
+    probabilities : ndarray
+        Of any shape.
+
+    Returns
+    -------
+    ndarray of float64
+
+    Raises
+    ------
+    InputError
+        When a probability is not between 0 and 1, or the sum is not a whole number.
+
+    Examples
+    --------
+    >>> checked(np.array([0.5, 0.5]))
+    array([0.5, 0.5])
+    """
+    probabilities = np.ascontiguousarray(probabilities, dtype=np.float64)
+    if not ((probabilities >= 0).all() and (probabilities <= 1).all()):
+        raise InputError("inclusion probabilities: expected numbers between 0 and 1")
+    total = float(probabilities.sum())
+    if abs(total - round(total)) > 1e-6:
+        raise InputError(f"inclusion probabilities: expected a sum that is a whole number, got {total:.9g}")
+    return probabilities
 
 
 @njit(nogil=True, cache=True)

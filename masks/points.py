@@ -8,9 +8,9 @@ from .variable_density import VariableDensity
 
 
 class VariableDensityPoints(VariableDensity):
-    """Random points, denser towards the centre: the density falls as (1 - r)^power.
+    """Random points, denser towards the centre: with the probabilities of a density law.
 
-    Source: Lustig, Donoho & Pauly, Magn. Reson. Med. 58 (2007) 1182.
+    By default the law is (1 - r)^2. Source: Lustig, Donoho & Pauly, Magn. Reson. Med. 58 (2007) 1182.
 
     Examples
     --------

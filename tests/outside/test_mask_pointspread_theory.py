@@ -70,3 +70,28 @@ def test_regular_lines_make_replicas_at_fov_over_r(lines: int, acceleration: int
     np.testing.assert_allclose(
         to_image(mask * to_kspace(image)), np.sum(replicas, axis=0) / acceleration, atol=1e-12
     )
+
+
+@pytest.mark.parametrize(
+    ("pattern", "grid", "acceleration"),
+    [
+        (VariableDensityLines(power=1), Grid((95,), 8), 3),
+        (VariableDensityPoints(power=1), Grid((17, 13), 3), 2),
+    ],
+)
+def test_compensated_for_the_density_the_mean_point_spread_is_that_of_full_sampling(
+    pattern, grid: Grid, acceleration: float
+) -> None:
+    # Source: Horvitz & Thompson, J. Am. Stat. Assoc. 47 (1952) 663: weighted by 1 / probability, the sum over
+    # a sample estimates the sum over all without bias: here that of exp(2 pi i k r / N).
+    draws, rng = 4000, np.random.default_rng(33)
+    density = pattern.density(grid, acceleration)
+    masks = [pattern.draw(grid, acceleration, rng) for _ in range(draws)]
+    found = np.array([point_spread(mask, density) * (1 / density[mask]).sum() for mask in masks]) / grid.size
+    everything = point_spread(density > 0) * np.count_nonzero(density) / grid.size
+    spread = found.std(axis=0) / np.sqrt(draws)
+    assert (abs(found.mean(axis=0) - everything) < 5 * spread + 1e-12).all()
+    plain = np.mean(
+        [point_spread(mask) for mask in masks], axis=0
+    )  # the density's own, with a wide main lobe
+    assert abs(plain - everything).max() > 0.1

@@ -37,6 +37,65 @@ def test_calibration_region_is_the_centred_block(grid: Grid) -> None:
 
 
 @given(grids())
+def test_elliptical_calibration_region_is_inscribed_in_the_block(grid: Grid) -> None:
+    ellipse = Grid(grid.shape, grid.calibration, "ellipse")
+    region, block = ellipse.calibration_region(), grid.calibration_region()
+    assert not (region & ~block).any()
+    if all(c % 2 for c in grid.calibration_sides):  # with a line of points on each of its axes
+        for axis in range(grid.axes):
+            others = tuple(a for a in range(grid.axes) if a != axis)
+            assert np.array_equal(region.any(axis=others), block.any(axis=others))
+    inside = (
+        region[np.ix_(*[np.flatnonzero(block.any(axis=1 - a)) for a in (0, 1)])] if grid.axes == 2 else region
+    )
+    assert grid.axes == 1 or np.array_equal(inside, inside[::-1, ::-1])
+    if grid.axes == 1:
+        assert np.array_equal(region, block)
+    elif min(grid.calibration_sides) > 20:
+        assert region.sum() / block.sum() == pytest.approx(np.pi / 4, rel=0.05)
+
+
+@given(grids())
+def test_partner_is_the_conjugate(grid: Grid) -> None:
+    partner = grid.partner()
+    k = np.stack(np.meshgrid(*[np.arange(n) - n // 2 for n in grid.shape], indexing="ij"), axis=-1).reshape(
+        -1, grid.axes
+    )
+    flat = partner.ravel()
+    has = flat >= 0
+    assert (k[flat[has]] == -k[has]).all()
+    assert np.array_equal(flat[flat[has]], np.flatnonzero(has))  # of the partner it is the partner
+    for lonely in k[~has]:
+        outside = any(-a + n // 2 >= n for a, n in zip(lonely, grid.shape, strict=True))
+        assert outside or not lonely.any()
+
+
+def test_shutter_and_partial_fourier() -> None:
+    allowed = Grid((64, 48), shutter=True).allowed()
+    assert allowed.sum() / allowed.size == pytest.approx(np.pi / 4, rel=0.03)
+    assert allowed[0, 24]
+    assert allowed[32, 0]
+    assert not allowed[0, 0]
+    assert Grid((64,), shutter=True).allowed().all()
+    kept = Grid((64, 48), partial_fourier=0.625).allowed()
+    assert np.flatnonzero(kept.any(axis=1)).tolist() == list(range(24, 64))
+    assert kept[24:].all()
+    assert (
+        Grid((10,), partial_fourier=0.6).allowed().sum() == 6
+    )  # 0.6 * 10 is above 6 in floating point or not
+
+
+@given(grids(), st.data())
+def test_the_acceleration_that_is_shown_gives_the_number_of_samples(grid: Grid, data: st.DataObject) -> None:
+    length = data.draw(st.integers(1, min(grid.size, 40)))
+    if grid.size // length * length < grid.calibration_region().sum():
+        return
+    grid = Grid(grid.shape, grid.calibration, train_length=length)
+    samples = data.draw(st.sampled_from(grid.counts()))
+    assert grid.samples(float(grid.shown(samples))) == samples
+
+
+@given(grids())
 def test_radius_is_0_at_the_centre_and_1_at_the_farthest_point(grid: Grid) -> None:
     radius = grid.radius()
     assert radius.shape == grid.shape

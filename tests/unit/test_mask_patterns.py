@@ -3,6 +3,7 @@
 import hashlib
 import subprocess
 import sys
+from itertools import product
 from math import prod
 from typing import Any
 
@@ -156,6 +157,50 @@ def test_an_acceleration_that_the_calibration_forbids_is_refused_by_every_patter
 def test_refused_options(power: Any) -> None:
     with pytest.raises(ValidationError):
         VariableDensityLines.model_validate({"power": power}, strict=True)
+
+
+@pytest.mark.parametrize(
+    ("options", "says"),
+    [
+        ({"law": "powr"}, r"expected power, gaussian, uniform, or a file \(.npy, .txt, .csv, .tsv\)"),
+        ({"law": "density.nii.gz"}, "or a file"),
+        ({"law": "gaussian", "width": 0}, "greater than 0"),
+    ],
+)
+def test_refused_laws(options: dict[str, Any], says: str) -> None:
+    with pytest.raises(ValidationError, match=says):
+        VariableDensityLines.model_validate(options)
+
+
+def test_every_law_makes_another_density() -> None:
+    grid = Grid((32, 24), 4)
+    options = [{}, {"power": 3}, {"law": "gaussian"}, {"law": "gaussian", "width": 0.5}, {"law": "uniform"}]
+    densities = [VariableDensityPoints(**o).density(grid, 4) for o in options]
+    assert len({d.tobytes() for d in densities}) == len(options)
+    assert len(np.unique(densities[-1])) == 2  # uniform outside the calibration region
+
+
+def test_regular_lines_meet_every_number_of_lines_with_partial_fourier_and_conjugates_skipped() -> None:
+    rng = np.random.default_rng()
+    for lines, calibration, fraction, skip, gap in product(
+        (16, 33), (0, 4, 5), (1.0, 0.75, 0.6), (False, True), (None, 3)
+    ):
+        if skip and gap:
+            continue  # not always, see test_mask_constraints
+        grid = Grid((lines,), calibration, partial_fourier=fraction, skip_conjugates=skip, largest_gap=gap)
+        for samples in grid.counts():
+            mask = RegularLines().draw(grid, float(grid.shown(samples)), rng)
+            assert mask.sum() == samples
+            assert grid.broken(mask) is None
+
+
+def test_regular_lines_alternate_between_the_sides_when_conjugates_are_skipped() -> None:
+    grid = Grid((129,), 9, skip_conjugates=True)
+    mask = RegularLines().draw(grid, 129 / 49, np.random.default_rng())
+    k = np.flatnonzero(mask) - 64
+    assert (np.diff(np.sort(abs(k[abs(k) > 4]))) <= 2).all()  # 40 of 60 pairs
+    assert np.diff(k).max() <= 4
+    assert abs(int((k > 4).sum()) - int((k < -4).sum())) <= 2
 
 
 def test_unknown_options_are_refused_and_patterns_do_not_change() -> None:
