@@ -325,9 +325,9 @@ def recon(
 ) -> None:
     """Reconstruct k-space that was undersampled, on a scanner or in retrospect.
 
-    K-space is centred: the zero frequency of an axis of length N is at index N // 2, counted from 0. The noise
-    is estimated from the border of k-space unless --sigma is given; detail at the border makes that too large
-    (a third to twofold is common), a filter of the raw data makes it far too small.
+    K-space is centred: the zero frequency of an axis of length N is at index N // 2, counted from 0. The
+    noise is estimated from the border of k-space unless --sigma is given; detail at the border makes that too
+    large (a third to twofold is common), a filter of the raw data makes it far too small.
     """
     import numpy as np
 

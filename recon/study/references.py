@@ -110,8 +110,8 @@ def warnings(reference: Reference) -> list[str]:
         return []
     sizes = [" x ".join(f"{length:g}" for length in lengths) for lengths in (reference.field_of_view_mm, own)]
     return [
-        f"the field of view of {sizes[0]} mm is smaller than the {sizes[1]} mm that {reference.phantom} is made for: "
-        "it may fold, and coil maps do not hold for what is folded"
+        f"the field of view of {sizes[0]} mm is smaller than the {sizes[1]} mm that {reference.phantom} "
+        "is made for: it may fold, and coil maps do not hold for what is folded"
     ]
 
 

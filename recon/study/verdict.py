@@ -259,7 +259,7 @@ def _close_calls(weakest: Curve | None, limits: Mapping[str, Limit]) -> list[str
     point = weakest.points[weakest.passed - 1]
     return [
         f"{name} at R = {text(point.acceleration)} keeps its limit of {limit} by less than the standard "
-        f"deviation over its {point.finished} draws ({point.means[name]:.4g} ± {point.deviations[name]:.2g}); "
+        f"deviation over its {point.finished} draws, {point.deviations[name]:.2g}; "
         "take more draws before you rely on it."
         for name, limit in limits.items()
         if name in point.deviations and limit.slack(point.means[name]) < point.deviations[name]

@@ -215,7 +215,7 @@ def test_folders_that_cannot_be_used(refused, tmp_path):
 
 
 def test_a_two_dimensional_multi_slice_scan(tmp_path):
-    """The physicist's finding: a file with a plane of k-space for each slice must not be transformed along z."""
+    """A file with a plane of k-space for each slice must not be transformed along z."""
     rng = np.random.default_rng(0)
     truth = np.zeros((32, 24, 3), np.complex64)
     truth[8:24, 6:18] = [1, 2, 3]
