@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numba import njit
 
-from .fista import as_lines
+from .fista import SETTLED, as_lines
 from .precision import real_type
 from .problem import Callback, Problem, relative
 
@@ -21,8 +21,8 @@ class Admm:
     iterations : int
         Largest number of iterations.
     tolerance : float
-        Stop when the primal residual ``||W x - v||`` and the dual residual ``rho ||v - v_before||`` are both
-        at most this times ``||v||``.
+        Stop when the primal residual ``||W x - v||``, the dual residual ``rho ||v - v_before||`` and the
+        change ``||v - v_before||`` have been at most this times ``||v||`` for `SETTLED` iterations on end.
     rho : float
         First penalty parameter, in units of the largest eigenvalue of ``A^H A``.
     inner : int
@@ -66,7 +66,7 @@ class Admm:
         lines = x.shape[0] * x.shape[1]
         sums = np.zeros((lines, 3))
         minimise_x = _exact if sensing.maps is None else _ConjugateGradients(problem, self.inner)
-        change, balance_at = np.inf, 4
+        change, settled, balance_at = np.inf, 0, 4
         for k in range(1, self.iterations + 1):
             minimise_x(problem, w, rho, x)
             W.forward(x, Wx)
@@ -79,8 +79,8 @@ class Admm:
             primal, moved, size = np.sqrt(sums.sum(axis=0))
             dual = rho / sensing.bound * moved
             change = relative(moved, size)
-            done = primal <= self.tolerance * size and dual <= self.tolerance * size
-            if k == balance_at and not done:
+            settled = settled + 1 if max(primal, dual, moved) <= self.tolerance * size else 0
+            if k == balance_at:
                 # ever rarer: convergence is proven for a rho that settles
                 balance_at += balance_at // 2
                 factor = 2.0 if primal > 3 * dual else 0.5 if dual > 3 * primal else 1.0
@@ -90,8 +90,8 @@ class Admm:
             W.inverse(Wx, w)
             if callback is not None and callback(k, W.inverse(v)):
                 return W.inverse(v), False, "stopped by the callback", k, change
-            if done:
-                return W.inverse(v), True, "primal and dual residual within tolerance", k, change
+            if settled == SETTLED:
+                return W.inverse(v), True, "change, primal and dual residual within tolerance", k, change
         return W.inverse(v), False, "iteration limit", self.iterations, change
 
 

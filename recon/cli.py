@@ -52,6 +52,10 @@ Threads = Annotated[
 Seed = Annotated[int, typer.Option(min=0, help="Seed of all that is random.")]
 
 
+INTERRUPTED = 130
+"""What the command-line library returns, without a word, after Ctrl-C."""
+
+
 def main() -> None:
     """Run the command line and exit: the entry point of the console command."""
     sys.exit(run_command(sys.argv[1:]))
@@ -69,7 +73,8 @@ def run_command(arguments: list[str]) -> int:
     0
     """
     try:
-        return int(app(arguments, prog_name="skipline", standalone_mode=False) or 0)
+        code = int(app(arguments, prog_name="skipline", standalone_mode=False) or 0)
+        return _complain("stopped", 1) if code == INTERRUPTED else code
     except InputError as error:
         return _complain(str(error), 2)
     except _Failed as error:
@@ -82,8 +87,13 @@ def run_command(arguments: list[str]) -> int:
         return 0
     except Exception as error:
         if hasattr(error, "format_message"):  # a usage error of the command line itself
-            return _complain(error.format_message(), 2)  # type: ignore[attr-defined]
+            message = error.format_message()  # type: ignore[attr-defined]
+            return _complain(message, 2) if message else 0  # no words: help was printed
         return _complain(f"failed: {type(error).__name__}: {error}", 1)
+
+
+def _warn(message: str) -> None:
+    print(f"skipline: warning: {message}", file=sys.stderr)
 
 
 def _complain(message: str, code: int) -> int:
@@ -138,8 +148,11 @@ def run(
     report = write_report(folder)
     print(_counted(outcome))
     print(outcome.verdict["sentence"])
+    for curve in outcome.verdict["curves"]:
+        reached = "none" if curve["acceleration"] is None else f"{curve['acceleration']:g}"
+        print("  " + ", ".join(filter(None, [f"{curve['label']}: R = {reached}", curve["condition_label"]])))
     for warning in outcome.verdict["warnings"]:
-        print(f"skipline: warning: {warning}", file=sys.stderr)
+        _warn(warning)
     print(f"report: {report}")
     if outcome.failed:
         first = outcome.failed[0]
@@ -157,6 +170,8 @@ def check(study: StudyFile, workers: Workers = None, overrides: Overrides = None
 
     loaded = load_study(_study_path(study), overrides or ())
     print(f"{loaded.about.title}: {estimate(loaded, workers)}")
+    for warning in loaded.warnings():
+        _warn(warning)
 
 
 @app.command(
@@ -181,7 +196,11 @@ def phantom(
         Path | None, typer.Option(metavar="FILE", help="Also write the coil maps, NIfTI.", show_default=False)
     ] = None,
 ) -> None:
-    """Write the fully sampled image of a phantom, and its k-space, from its closed form."""
+    """Write the fully sampled image of a phantom, and its k-space, from its closed form.
+
+    SNR is the mean magnitude inside the noise-free object over the standard deviation of the real part of the
+    noise (that of the imaginary part is the same).
+    """
     import numpy as np
 
     from ..phantoms.acquisition import complex_noise
@@ -197,11 +216,13 @@ def phantom(
     reference = complete(Reference(phantom=name, matrix=_two(matrix, int, "--matrix"), field_of_view_mm=fov))
     prepared = prepare(reference, coils, None)
     full, image = prepared.kspace, prepared.image
+    sigma = 0.0
     if snr is not None:
         sigma = prepared.sigma(_positive(snr, "--snr"))
         full = full + complex_noise(full.shape, sigma, generator(seed, "noise", 0))
         image = to_image(full)[0] if prepared.maps is None else _combined(full, prepared.maps)
-    about = {"Description": f"{name}, {coils} coil(s), SNR {snr or 'without noise'}"}
+    noise = "no noise" if snr is None else f"SNR {snr:g}"
+    about = {"Description": f"{name}, {coils} coil{'s' * (coils > 1)}, {noise}", "Sigma": sigma, "Seed": seed}
     write_volume(output, image.astype(np.complex64), prepared.affine, content="image", sidecar=about)
     if kspace is not None:
         write_volume(kspace, full.astype(np.complex64), prepared.affine, content="k-space", sidecar=about)
@@ -234,7 +255,7 @@ def mask(
     acceleration: Annotated[float, typer.Option(help="Points of the grid over samples.", show_default=False)],
     calibration: Annotated[
         int, typer.Option(min=0, help="Width of the fully sampled centre, in samples.")
-    ] = 24,
+    ] = 0,
     phase_encode: Annotated[
         str | None,
         typer.Option(metavar="AXES", help="Undersampled axes, such as y, yz or xy.", show_default=False),
@@ -290,27 +311,38 @@ def recon(
             show_default=False,
         ),
     ] = None,
+    encoded_axes: Annotated[
+        str | None,
+        typer.Option(
+            metavar="AXES",
+            help="Axes of the file that are spatial frequencies: xy for a 2-D multi-slice scan; by default "
+            "what its sidecar says, otherwise xyz.",
+            show_default=False,
+        ),
+    ] = None,
     threads: Threads = None,
     options: Options = None,
 ) -> None:
     """Reconstruct k-space that was undersampled, on a scanner or in retrospect.
 
-    K-space is centred: the zero frequency of an axis of length N is at index N // 2, counted from 0.
+    K-space is centred: the zero frequency of an axis of length N is at index N // 2, counted from 0. The
+    noise is estimated from the border of k-space unless --sigma is given; detail at the border makes that too
+    large (a third to twofold is common), a filter of the raw data makes it far too small.
     """
     import numpy as np
 
     from .acquired import Acquired, without_full_axes
     from .files import read_volume, write_volume
+    from .kspace_file import read_kspace
     from .options import with_options
     from .study.machine import cores
 
     chosen = with_options("methods", method, options or ())
-    source = read_volume(kspace)
-    if not np.iscomplexobj(source.data):
-        raise InputError(f"{kspace} is real; expected complex k-space")
-    if source.data.ndim == 5:
-        raise InputError(f"{kspace} has {len(source.data)} time frames; expected one")
-    data = source.data if source.data.ndim == 4 else source.data[None]
+    for path in (kspace, mask, maps):
+        if path is not None and output.exists() and path.exists() and path.samefile(output):
+            raise InputError(f"--output {output} is one of the inputs; expected another file")
+    source = read_kspace(kspace, encoded_axes)
+    data = source.data
     points = read_volume(mask, allow_zero=True).data != 0
     if points.ndim != 3:
         raise InputError(f"{mask} has {points.ndim} dimensions; expected a mask (x, y, z)")
@@ -322,6 +354,15 @@ def recon(
         sizes = [" x ".join(map(str, shape)) for shape in (points.shape, data.shape[1:])]
         raise InputError(f"{mask} is {sizes[0]} and {kspace} is {sizes[1]}; expected the same grid")
     acquired = Acquired(data, without_full_axes(points), sensitivities, sigma)
+    measured = np.any(data != 0, axis=0)
+    empty = np.count_nonzero(points & ~measured) / np.count_nonzero(points)
+    outside = np.count_nonzero(measured & ~points) / max(np.count_nonzero(measured), 1)
+    for share, what in (
+        (empty, "points of the mask hold exactly zero"),
+        (outside, "samples lie outside the mask"),
+    ):
+        if share > 0.01:
+            _warn(f"{share:.0%} of the {what}; does {mask} belong to {kspace}?")
     with _busy(f"{method}, {' x '.join(map(str, acquired.shape))}"):
         result = chosen.reconstruct(acquired, threads=threads or cores())
     about = {
@@ -336,9 +377,12 @@ def recon(
         "Weight": result.weight,
     }
     write_volume(output, result.image, source.affine, content="image", sidecar=about, like=source)
-    print(f"acceleration {acquired.acceleration:.4g}, {result.iterations} iterations, {result.stopped}")
+    noise = "" if result.sigma is None else f", sigma {result.sigma:.4g} ({result.sigma_source})"
+    print(
+        f"acceleration {acquired.acceleration:.4g}, {result.iterations} iterations, {result.stopped}{noise}"
+    )
     if not result.converged:
-        print("skipline: warning: not converged; raise iterations or tolerance", file=sys.stderr)
+        _warn("not converged: the image is not yet the minimum; give more iterations")
 
 
 @app.command(
@@ -352,7 +396,10 @@ def compare(
     ] = None,
     as_json: Annotated[bool, typer.Option("--json", help="Print JSON.")] = False,
 ) -> None:
-    """Compare an image with its reference: every measure, inside the object and overall."""
+    """Compare an image with its reference: every measure, inside the object and overall.
+
+    Magnitudes are compared; an error of the phase alone does not show.
+    """
     import numpy as np
 
     from ..phantoms.acquisition import support

@@ -52,7 +52,10 @@ class WaveletSparse(BaseModel):
         default=None, ge=0, description="wavelet levels; by default down to 8 to 16 samples an axis"
     )
     weight: float = Field(
-        default=1.0, ge=0, description="regularisation weight in units of the noise's standard deviation"
+        default=1.0,
+        ge=0,
+        allow_inf_nan=False,
+        description="regularisation weight in units of the noise's standard deviation",
     )
     wavelet_axes: Literal["auto", "xy", "xyz"] = Field(
         default="auto",
@@ -63,9 +66,13 @@ class WaveletSparse(BaseModel):
         description="penalise the coarsest scale too; false needs a calibration region as wide as that scale",
     )
     tolerance: float = Field(
-        default=5e-6, gt=0, description="stop when change and optimality residual are below this, relative"
+        default=5e-6,
+        gt=0,
+        le=0.1,
+        description="stop when change and optimality residual are below this, relative to the image; single "
+        "precision reaches about 1e-6",
     )
-    iterations: int = Field(default=1000, ge=1, description="largest number of iterations")
+    iterations: int = Field(default=2000, ge=1, le=1_000_000, description="largest number of iterations")
 
     @field_validator("wavelet")
     @classmethod

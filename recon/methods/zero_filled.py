@@ -34,4 +34,4 @@ class ZeroFilled(BaseModel):
         from ..team import Team
 
         sensing = Sensing(data.mask, data.shape, data.maps, data.dtype, Team(threads))
-        return Reconstruction(sensing.zero_filled(sensing.encode(data.kspace)), sigma=data.sigma)
+        return Reconstruction(sensing.zero_filled(sensing.encode(data.kspace)))

@@ -187,5 +187,5 @@ def _profile(findings: Findings) -> Profile | None:
     pattern = case.settings["pattern"]
     return Profile(
         [round(share / darkest, 3) for share in shares],
-        f"samples along phase encode {axis}: {pattern}, R = {number(case.acceleration)}",
+        f"share of samples taken along k{axis}: {pattern}, R = {number(case.acceleration)}",
     )

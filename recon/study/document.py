@@ -67,6 +67,8 @@ class Document:
 
     def refusal(self, keys: Keys, message: str) -> InputError:
         """Return the error that says what is wrong at `keys`, and where that is."""
+        if keys not in self.lines and any(name[: len(keys)] == keys for name in self.overridden):
+            return InputError(f"--set {dotted(keys)}: {message}")
         for length in range(len(keys), 0, -1):
             if keys[:length] in self.overridden:
                 return InputError(f"--set {dotted(keys)}: {message}")

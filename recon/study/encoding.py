@@ -36,6 +36,12 @@ def phase_encode_axes(phase_encode: str | None, pattern_axes: int, shape: Shape)
     if phase_encode is None:
         usual = {1: "y", 2: "yz" if shape[2] > 1 else "xy"}
         return usual[pattern_axes]
+    if (
+        not phase_encode
+        or any(axis not in "xyz" for axis in phase_encode)
+        or "".join(sorted(set(phase_encode))) != phase_encode
+    ):
+        raise InputError(f'"{phase_encode}" names no phase-encode axes; expected one of: x, y, z, xy, xz, yz')
     if len(phase_encode) != pattern_axes:
         expected = {1: "one axis, for example y", 2: "two axes, for example yz"}[pattern_axes]
         raise InputError(f'"{phase_encode}" does not fit the pattern; it undersamples {expected}')

@@ -77,6 +77,14 @@ class Study:
         """Return the study's cases in the order of its tables, each once."""
         return list({case.id: case for case in self._all_cases()}.values())
 
+    def warnings(self) -> list[str]:
+        """Return what can be done but is probably not meant, a sentence each."""
+        return [
+            warning
+            for reference in dict.fromkeys(setting.reference for setting in self.settings)
+            for warning in references.warnings(reference)
+        ]
+
     def _all_cases(self) -> Iterator[Case]:
         for setting in self.settings:
             noise_draws = 1 if setting.acquisition.snr is None else setting.acquisition.noise_draws

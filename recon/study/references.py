@@ -94,6 +94,27 @@ def complete(reference: Reference) -> Reference:
     )
 
 
+def warnings(reference: Reference) -> list[str]:
+    """Return what is probably not meant with a complete reference, a sentence each.
+
+    Examples
+    --------
+    >>> warnings(complete(Reference(phantom="line-pair-slab", field_of_view_mm=(240.0, 120.0))))[0][:45]
+    'the field of view of 240 x 120 mm is smaller '
+    """
+    if reference.phantom is None or reference.field_of_view_mm is None:
+        return []
+    own = _phantom(reference.phantom).field_of_view_mm
+    own = own if isinstance(own, tuple) else (own, own)
+    if all(given >= needed for given, needed in zip(reference.field_of_view_mm, own, strict=True)):
+        return []
+    sizes = [" x ".join(f"{length:g}" for length in lengths) for lengths in (reference.field_of_view_mm, own)]
+    return [
+        f"the field of view of {sizes[0]} mm is smaller than the {sizes[1]} mm that {reference.phantom} "
+        "is made for: it may fold, and coil maps do not hold for what is folded"
+    ]
+
+
 def shape(reference: Reference) -> Shape:
     """Return the shape (x, y, z) of a complete reference; reads its file.
 
@@ -122,8 +143,7 @@ def coil_count(reference: Reference, acquisition: Acquisition) -> int:
     """
     measured = None
     if reference.kspace is not None:
-        data = _source_data(reference)
-        measured = data.shape[0] if data.ndim == 4 else 1
+        measured = len(_source_data(reference))
         if measured > 1 and acquisition.maps is None:
             raise InputError(f"k-space of {measured} coils needs their sensitivities; give acquisition.maps")
         if acquisition.coils not in (None, measured):
@@ -187,7 +207,7 @@ def prepare(reference: Reference, coils: int, maps_file: str | None) -> Prepared
         data = np.asarray(_source_data(reference), np.complex64)
         affine = _sliced_affine(like.affine, reference)
         if reference.kspace is not None:
-            kspace = data if data.ndim == 4 else data[None]
+            kspace = data
         else:
             kspace = to_kspace(data[None] if maps is None else (maps * data).astype(np.complex64))
 
@@ -242,7 +262,10 @@ def _ring_array(reference: Reference, coils: int) -> tuple[Any, np.ndarray]:
 @lru_cache(maxsize=2)
 def _source(reference: Reference) -> Volume:
     from ..files import read_volume
+    from ..kspace_file import read_kspace
 
+    if reference.kspace is not None:
+        return read_kspace(reference.kspace, reference.encoded_axes)
     return read_volume(reference.source, phase=reference.phase)
 
 
@@ -263,8 +286,6 @@ def _source_data(reference: Reference) -> np.ndarray:
                 raise InputError(
                     f"slices {first} to {last} are zero everywhere; there is nothing to compare with"
                 )
-    elif not np.iscomplexobj(data):
-        raise InputError("expected complex k-space, but the values are real")
     return data
 
 

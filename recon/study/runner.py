@@ -125,6 +125,7 @@ def run(study: Study, folder: str | Path, workers: int | None = None, progress: 
 
     rows = [Row(case, records[case.id], failures.get(case.id, "")) for case in cases]
     verdict = results.finite(decide(study.about.title, rows, study.limits, measures))
+    verdict["warnings"] = [*study.warnings(), *verdict["warnings"]]
     write_text(folder / "cases.csv", cases_csv(rows, measures))
     write_text(folder / "summary.csv", summary_csv(rows, measures))
     write_json(folder / "verdict.json", verdict)

@@ -12,6 +12,9 @@ from pydantic_core import PydanticCustomError
 
 from .sweep import SINGLE
 
+Points = Annotated[int, Field(ge=16, le=8192)]
+"""Points along an axis of a phantom's matrix; similarity needs 11, and a slice of 8192 fills a memory."""
+
 PhaseEncode = Literal["x", "y", "z", "xy", "xz", "yz"]
 
 
@@ -65,7 +68,12 @@ class Reference(_Table, frozen=True):
         default=None,
         description="NIfTI volume of fully sampled k-space, centred; several coils need acquisition.maps.",
     )
-    matrix: tuple[Annotated[int, Field(ge=8)], Annotated[int, Field(ge=8)]] | None = Field(
+    encoded_axes: Literal["xy", "xz", "yz", "xyz"] | None = Field(
+        default=None,
+        description="Axes of the k-space file that are spatial frequencies: xy for a 2-D multi-slice scan. "
+        "When not given, EncodedAxes of its sidecar; without one, xyz.",
+    )
+    matrix: tuple[Points, Points] | None = Field(
         default=None, description="Points along x and y; for phantoms only, 256 x 256 when not given."
     )
     field_of_view_mm: tuple[Annotated[float, Field(gt=0)], Annotated[float, Field(gt=0)]] | None = Field(
@@ -88,6 +96,7 @@ class Reference(_Table, frozen=True):
             raise _refusal(given[1], f"there is a {given[0]} already; expected one of phantom, image, kspace")
         for key, owner in (
             ("phase", "image"),
+            ("encoded_axes", "kspace"),
             ("matrix", "phantom"),
             ("field_of_view_mm", "phantom"),
             ("slices", "image"),
@@ -124,6 +133,7 @@ class Acquisition(_Table, frozen=True):
     coils: int | None = Field(
         default=None,
         ge=1,
+        le=128,
         description="Number of coils of a simulated ring array; without this and maps 1, a uniform coil.",
     )
     snr: float | None = Field(
@@ -137,7 +147,7 @@ class Acquisition(_Table, frozen=True):
         description="NIfTI volume of complex coil maps (x, y, z, 1, coil); a path as reference.image.",
     )
     noise_draws: Annotated[int, SINGLE] = Field(
-        default=1, ge=1, description="Independent draws of the noise."
+        default=1, ge=1, le=10_000, description="Independent draws of the noise."
     )
 
     @field_validator("snr")
@@ -173,7 +183,7 @@ class Sampling(_Table, frozen=True):
         description="Points of the phase-encode grid / samples taken, calibration region included.",
     )
     draws: Annotated[int, SINGLE] = Field(
-        default=1, ge=1, description="Independent draws of each random mask."
+        default=1, ge=1, le=10_000, description="Independent draws of each random mask."
     )
 
     @field_validator("calibration")

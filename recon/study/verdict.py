@@ -10,13 +10,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from ... import CAUTION
 from .cases import text
 from .settings import Limit
-from .tables import DRAWS, Row, grouped, mean
+from .tables import DRAWS, Row, deviation, grouped, mean
 
 
 @dataclass(frozen=True)
@@ -33,6 +33,8 @@ class Point:
         Numbers of cases.
     broken : tuple of str
         The measures whose mean is outside its limit.
+    deviations : dict of str to float
+        Standard deviation over the draws of every measure; none of a single draw.
     """
 
     acceleration: float
@@ -40,6 +42,7 @@ class Point:
     finished: int
     failed: int
     broken: tuple[str, ...]
+    deviations: Mapping[str, float] = field(default_factory=dict)
 
     @property
     def passes(self) -> bool:
@@ -145,7 +148,7 @@ def decide(
         "first_failure": weakest.first_failure(limits) if weakest else None,
         "limits": {name: limit.model_dump(exclude_none=True) for name, limit in limits.items()},
         "curves": [_as_dict(curve, limits, curves, condition_names) for curve in curves],
-        "warnings": _warnings(rows, not_converged, failed),
+        "warnings": [*_warnings(rows, not_converged, failed), *_close_calls(weakest, limits)],
         "not_converged": [{"id": row.case.id, "case": str(row.case)} for row in not_converged],
         "failed": [{"id": row.case.id, "case": str(row.case), "error": row.failure} for row in failed],
         "cases": len(rows),
@@ -168,8 +171,10 @@ def _curve(rows: Sequence[Row], limits: Mapping[str, Limit], measures: Sequence[
         finished = [row for row in group if row.record is not None]
         means = {name: _mean([row.measure(name) for row in finished]) for name in measures}
         broken = tuple(name for name, limit in limits.items() if finished and not limit.allows(means[name]))
+        deviations = {name: deviation([row.measure(name) for row in finished]) for name in measures}
+        spread = {name: value for name, value in deviations.items() if value is not None}
         acceleration = float(group[0].settings["acceleration"])
-        points.append(Point(acceleration, means, len(finished), len(group) - len(finished), broken))
+        points.append(Point(acceleration, means, len(finished), len(group) - len(finished), broken, spread))
     return Curve(choice, condition, tuple(sorted(points, key=lambda point: point.acceleration)))
 
 
@@ -214,8 +219,11 @@ def _sentence(weakest: Curve | None, label: str, condition: str, limits: Mapping
     highest = text(weakest.acceleration)
     if failure is None:
         return f"R = {highest} is the highest acceleration tried, and no limit broke with {label}."
+    tried = ", ".join(text(point.acceleration) for point in weakest.points)
+    everywhere = " in every condition" if condition else ""
     return (
-        f"R = {highest} is the highest acceleration that meets every limit, with {label}; "
+        f"R = {highest} is the highest of those tried ({tried}) that meets every limit{everywhere}, "
+        f"with {label}; "
         f"at R = {text(failure['acceleration'])}{where} {_breaks(failure)}."
     )
 
@@ -227,9 +235,8 @@ def _breaks(failure: Mapping[str, Any]) -> str:
     value, limit = failure["mean"], failure["limit"]
     if not math.isfinite(failure["excess"]):
         return f"{failure['measure']} is {value}, its limit is {limit}"
-    return (
-        f"{failure['measure']} breaks first: {value:.4g}, {failure['excess']:.1%} beyond its limit of {limit}"
-    )
+    beyond = f"{failure['excess']:.1%}" if failure["excess"] >= 5e-4 else "a hair"
+    return f"{failure['measure']} breaks first: {value:.4g}, {beyond} beyond its limit of {limit}"
 
 
 def _warnings(rows: Sequence[Row], not_converged: Sequence[Row], failed: Sequence[Row]) -> list[str]:
@@ -243,6 +250,20 @@ def _warnings(rows: Sequence[Row], not_converged: Sequence[Row], failed: Sequenc
             f"{len(not_converged)} of {len(rows)} cases stopped before they converged: {named}{more}."
         )
     return warnings
+
+
+def _close_calls(weakest: Curve | None, limits: Mapping[str, Limit]) -> list[str]:
+    """Name the limits that the verdict keeps by less than the standard deviation over the draws."""
+    if weakest is None or not weakest.passed:
+        return []
+    point = weakest.points[weakest.passed - 1]
+    return [
+        f"{name} at R = {text(point.acceleration)} keeps its limit of {limit} by less than the standard "
+        f"deviation over its {point.finished} draws, {point.deviations[name]:.2g}; "
+        "take more draws before you rely on it."
+        for name, limit in limits.items()
+        if name in point.deviations and limit.slack(point.means[name]) < point.deviations[name]
+    ]
 
 
 def _as_dict(

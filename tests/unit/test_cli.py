@@ -7,6 +7,7 @@ import subprocess
 import sys
 import time
 from pathlib import Path
+from typing import Any
 
 import jsonschema
 import nibabel as nib
@@ -15,6 +16,7 @@ import pytest
 
 from skipline.recon.cli import run_command
 from skipline.recon.files import read_volume, write_volume
+from skipline.recon.fourier import to_kspace
 
 CONFIGS = Path(__file__).parents[2] / "configs"
 SMALL = [
@@ -61,9 +63,9 @@ def test_phantom_mask_recon_compare(scan, tmp_path, capsys):
     line = f"recon {scan['kspace']} {scan['mask']} --output {out} --maps {scan['maps']} --option weight=1"
     assert run_command(line.split()) == 0
     for path, shape in ((out, (64, 48, 1)), (scan["kspace"], (64, 48, 1, 1, 4)), (scan["mask"], (64, 48, 1))):
-        image = nib.load(path)
+        image: Any = nib.load(path)
         assert image.shape == shape
-        np.testing.assert_allclose(image.affine, nib.load(scan["image"]).affine)
+        np.testing.assert_allclose(image.affine, read_volume(scan["image"]).affine)
     sidecar = json.loads((tmp_path / "sparse.json").read_text())
     assert sidecar["Converged"] is True
     assert sidecar["SigmaSource"] == "k-space border"
@@ -115,6 +117,7 @@ def test_schema_accepts_the_ready_studies(capsys):
         if file.stem == "volume-study":
             values["reference"]["image"] = "volume.nii.gz"
         jsonschema.validate(values, schema)
+    values = tomllib.loads((CONFIGS / "first-study.toml").read_text())
     with pytest.raises(jsonschema.ValidationError):
         jsonschema.validate(values | {"sampling": {"pattern": "circles"}}, schema)
 
@@ -209,6 +212,65 @@ def test_folders_that_cannot_be_used(refused, tmp_path):
     assert "another study" in refused("run", "multi-coil-study", "--output", tmp_path / "a")
     (tmp_path / "file").write_text("")
     assert str(tmp_path / "file") in refused("run", "first-study", "--output", tmp_path / "file" / "b")
+
+
+def test_a_two_dimensional_multi_slice_scan(tmp_path):
+    """A file with a plane of k-space for each slice must not be transformed along z."""
+    rng = np.random.default_rng(0)
+    truth = np.zeros((32, 24, 3), np.complex64)
+    truth[8:24, 6:18] = [1, 2, 3]
+    planes = to_kspace(truth, (0, 1)).astype(np.complex64)
+    lines = np.broadcast_to(rng.random((1, 24, 1)) < 2, truth.shape)
+    write_volume(tmp_path / "mask.nii", lines, np.eye(4), content="mask")
+    for name, sidecar, option in (("a", {"EncodedAxes": "xy"}, []), ("b", {}, ["--encoded-axes", "xy"])):
+        write_volume(tmp_path / f"{name}.nii", planes, np.eye(4), content="k-space", sidecar=sidecar)
+        out = tmp_path / f"{name}-image.nii"
+        line = ["recon", tmp_path / f"{name}.nii", tmp_path / "mask.nii", "--output", out, *option]
+        for method in ("zero-filled", "wavelet-sparse"):
+            assert run_command([*map(str, line), "--method", method, "--sigma", "0"]) == 0
+            np.testing.assert_allclose(read_volume(out).data, truth, atol=1e-4)
+
+
+def test_recon_does_not_overwrite_its_input_and_doubts_a_wrong_mask(refused, scan, tmp_path, capsys):
+    line = ["recon", scan["kspace"], scan["mask"], "--maps", scan["maps"], "--method", "zero-filled"]
+    assert "is one of the inputs" in refused(*line, "--output", scan["kspace"])
+    source = read_volume(scan["kspace"])
+    sampled = read_volume(scan["mask"]).data != 0
+    write_volume(scan["kspace"], source.data * sampled, source.affine, content="k-space")
+    write_volume(tmp_path / "other.nii", ~sampled, source.affine, content="mask")
+    line[2] = tmp_path / "other.nii"
+    assert run_command([*map(str, line), "--output", str(tmp_path / "o.nii")]) == 0
+    err = capsys.readouterr().err
+    assert "hold exactly zero" in err
+    assert "outside the mask" in err
+
+
+@pytest.mark.parametrize("axes", ["yx", "a", "yy", ""])
+def test_phase_encode_axes_that_do_not_exist(refused, scan, tmp_path, axes):
+    line = ["mask", "variable-density-points", "--output", tmp_path / "m.nii", "--like", scan["image"]]
+    assert "expected one of: x, y, z, xy, xz, yz" in refused(
+        *line, "--acceleration", 4, "--phase-encode", axes
+    )
+
+
+def test_warnings_of_a_study(capsys, tmp_path):
+    line = ["--set", "reference.field_of_view_mm=[240, 150]", *SMALL]
+    assert run_command(["check", "first-study", *line]) == 0
+    assert "it may fold" in capsys.readouterr().err
+    line = [
+        "--output",
+        str(tmp_path / "o"),
+        *SMALL,
+        "--set",
+        "sampling.draws=3",
+        "--set",
+        "limits.nrmse.at_most=0.0525",
+    ]
+    assert run_command(["run", "first-study", *line]) == 0
+    captured = capsys.readouterr()
+    assert "of those tried (2, 3)" in captured.out
+    assert "variable-density-lines and zero-filled: R = none" in captured.out
+    assert "take more draws" in captured.err
 
 
 def test_usage_errors_are_one_line(refused):

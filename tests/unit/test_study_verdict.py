@@ -77,7 +77,7 @@ def test_the_highest_acceleration_below_which_all_pass():
     found = verdict([row(4, (0.06, 0.97)), row(2, (0.02, 0.99)), row(3, (0.03, 0.98)), row(6, (0.01, 0.99))])
     assert found["acceleration"] == 3, "6 passes, but 4 below it does not"
     assert found["sentence"] == (
-        "R = 3 is the highest acceleration that meets every limit, with lines and sparse; "
+        "R = 3 is the highest of those tried (2, 3, 4, 6) that meets every limit, with lines and sparse; "
         "at R = 4 nrmse breaks first: 0.06, 20.0% beyond its limit of at most 0.05."
     )
     assert found["first_failure"]["measure"] == "nrmse"
