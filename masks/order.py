@@ -115,8 +115,8 @@ def echo_trains(
         See `OrderName`.
     effective_echo : int, optional
         Number, from 1, of the echo that acquires the centre of k-space, or the sample nearest to it when the
-        mask leaves the centre out (by `Grid.radius`). When not given: the echo for which nothing wraps round at the end of
-        k-space; with ``centre-out`` the first.
+        mask leaves the centre out (by `Grid.radius`). When not given: the echo for which nothing wraps round
+        at the end of k-space; with ``centre-out`` the first.
     axis : int
         The axis along which the bands of ``linear`` follow each other.
     echo_spacing_ms : float

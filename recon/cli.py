@@ -212,8 +212,10 @@ def phantom(
 
     if maps is not None and coils == 1:
         raise InputError("--maps: one coil has no map here; ask for more with --coils")
-    fov = None if field_of_view_mm is None else _two(field_of_view_mm, float, "--field-of-view-mm")
-    reference = complete(Reference(phantom=name, matrix=_two(matrix, int, "--matrix"), field_of_view_mm=fov))
+    fov = None if field_of_view_mm is None else _numbers(field_of_view_mm, float, "--field-of-view-mm", 2)
+    reference = complete(
+        Reference(phantom=name, matrix=_numbers(matrix, int, "--matrix", 2), field_of_view_mm=fov)
+    )
     prepared = prepare(reference, coils, None)
     full, image = prepared.kspace, prepared.image
     sigma = 0.0
@@ -240,53 +242,127 @@ def _combined(kspace: Any, maps: Any) -> Any:
 
 
 @app.command(
-    epilog="Example: [bold]skipline mask variable-density-lines --output mask.nii.gz --like slab.nii.gz "
-    "--acceleration 4 --calibration 24 --option power=3[/bold]"
+    epilog="Example: [bold]skipline mask poisson-disc --matrix 1,320,256 --phase-encode yz --acceleration 8 "
+    "--constraint calibration=24 --constraint train_length=32 --output mask.nii.gz --table order.tsv "
+    "--figure mask.png[/bold]"
 )
 def mask(
-    pattern: Annotated[str, typer.Argument(help="Pattern, as [bold]skipline list patterns[/bold] tells.")],
-    output: Annotated[Path, typer.Option(metavar="FILE", help="Mask, NIfTI.", show_default=False)],
+    pattern: Annotated[
+        str | None,
+        typer.Argument(help="Pattern, as [bold]skipline list patterns[/bold] tells.", show_default=False),
+    ] = None,
+    output: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Mask, NIfTI.", show_default=False)
+    ] = None,
     like: Annotated[
-        Path,
-        typer.Option(
-            metavar="FILE", help="The image or k-space that the mask is for, NIfTI.", show_default=False
-        ),
-    ],
-    acceleration: Annotated[float, typer.Option(help="Points of the grid over samples.", show_default=False)],
-    calibration: Annotated[
-        int, typer.Option(min=0, help="Width of the fully sampled centre, in samples.")
-    ] = 0,
+        Path | None,
+        typer.Option(metavar="FILE", help="The image or k-space that the mask is for.", show_default=False),
+    ] = None,
+    matrix: Annotated[
+        str | None,
+        typer.Option(metavar="NX,NY,NZ", help="The same without a file, voxels of 1 mm.", show_default=False),
+    ] = None,
+    acceleration: Annotated[
+        float | None, typer.Option(help="Points of the grid over samples.", show_default=False)
+    ] = None,
     phase_encode: Annotated[
         str | None,
         typer.Option(metavar="AXES", help="Undersampled axes, such as y, yz or xy.", show_default=False),
     ] = None,
-    seed: Seed = 0,
+    constraints: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--constraint",
+            metavar="KEY=VALUE",
+            help="calibration, calibration_shape, shutter, partial_fourier, largest_gap, skip_conjugates or "
+            "train_length, as in a study file; may be given often.",
+        ),
+    ] = None,
     options: Options = None,
+    seed: Seed = 0,
+    best_of: Annotated[int, typer.Option(min=1, help="Draws to compare; the best is taken.")] = 1,
+    criterion: Annotated[
+        str, typer.Option(help="What is best: sidelobe, compensated-peak, compensated-rms or largest-gap.")
+    ] = "sidelobe",
+    table: Annotated[
+        Path | None,
+        typer.Option(metavar="FILE", help="Sampling table for the sequence, TSV.", show_default=False),
+    ] = None,
+    order: Annotated[str, typer.Option(help="linear, centre-out or interleaved.")] = "linear",
+    effective_echo: Annotated[
+        int | None, typer.Option(min=1, help="Echo that takes the centre of k-space.", show_default=False)
+    ] = None,
+    echo_spacing_ms: Annotated[float, typer.Option(help="Time between echoes.")] = 5.0,
+    repetition_time_ms: Annotated[float, typer.Option(help="Time between echo trains.")] = 1000.0,
+    figure: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="FILE", help="Picture: mask, density, point spread, gaps, order.", show_default=False
+        ),
+    ] = None,
+    judge: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="FILE", help="Judge this mask, NIfTI or TSV, in place of a new one.", show_default=False
+        ),
+    ] = None,
+    threads: Threads = None,
 ) -> None:
-    """Draw a sampling mask."""
-    import numpy as np
+    """Design a sampling mask, or judge one: point spread, gaps, density, order.
 
-    from ..masks.grid import Grid
-    from .files import phase_encoding, read_volume, write_volume
-    from .options import with_options
-    from .study.encoding import grid_shape, on_kspace, phase_encode_axes
-    from .study.seeds import generator
+    A sampling table says nothing of SAR, nerve stimulation, gradient heating or acoustic limits: the
+    scanner's own safety checks stay in force.
+    """
+    from .design import MaskTask, design, read_design, summary
+    from .files import sidecar_path
 
-    drawn = with_options("patterns", pattern, options or ())
-    volume = read_volume(like)
-    x, y, z = volume.data.shape[-3:]
-    axes = phase_encode_axes(phase_encode, drawn.axes, (x, y, z))
-    grid = Grid(grid_shape(axes, (x, y, z)), calibration)
-    sampled = on_kspace(drawn.draw(grid, acceleration, generator(seed, "mask", 0)), axes)
-    achieved = sampled.size / int(sampled.sum())
-    about = {
-        **phase_encoding(axes),
-        "Description": f"{pattern}, acceleration {achieved:g}, seed {seed}",
-        "Acceleration": achieved,
-    }
-    full = np.ascontiguousarray(np.broadcast_to(sampled, (x, y, z)))
-    write_volume(output, full, volume.affine, content="mask", sidecar=about, like=volume)
-    print(f"{int(sampled.sum())} of {sampled.size} samples, acceleration {achieved:.4g}")
+    task = None
+    if judge is not None:
+        if pattern is not None:
+            raise InputError(f"--judge judges {judge}; expected no pattern beside it, not {pattern}")
+        found, name = read_design(judge), judge.name
+    elif pattern is None or output is None or acceleration is None:
+        raise InputError("expected a pattern, --output and --acceleration; or --judge FILE")
+    else:
+        from .study.machine import cores
+
+        size = None if matrix is None else _numbers(matrix, int, "--matrix", 3)
+        task = MaskTask.of(pattern, like, size, acceleration, phase_encode, constraints or (), options or ())
+        found = design(task.pattern, task.sampling, task.shape, seed, best_of, criterion, threads or cores())
+        name = pattern
+    trains = None
+    if table is not None:
+        from ..masks.order import echo_trains
+
+        trains = echo_trains(
+            found.mask, found.grid.train_length or 1, order=order,  # type: ignore[arg-type]  # checked there
+            effective_echo=effective_echo, echo_spacing_ms=echo_spacing_ms,
+            repetition_time_ms=repetition_time_ms,
+        )  # fmt: skip
+    judgement = found.judgement()
+    about = {"Pattern": name, "Seed": seed, "Draw": found.draw, "Acceleration": judgement.acceleration}
+    if task is not None and output is not None:
+        if table is not None and table.with_suffix(".json") == sidecar_path(output):
+            raise InputError(
+                f"--table {table} has the sidecar of {output}; expected another name before .tsv"
+            )
+        task.write(output, found, about | {"Judgement": judgement.to_dict()})
+    if table is not None and trains is not None:
+        from ..masks.table import write_table
+
+        write_table(table, trains, about)
+    if figure is not None:
+        from .report.mask_figure import write_mask_figure
+
+        write_mask_figure(
+            figure, found.mask, density=found.density, allowed=found.grid.allowed(), trains=trains, title=name
+        )
+    print("\n".join(summary(judgement)))
+    if trains is not None:
+        print(
+            f"{int(trains.train.max()) + 1} echo trains of {trains.train_length}, effective echo "
+            f"{trains.effective_echo}, largest jump {trains.largest_jump:.3g} grid steps"
+        )
 
 
 @app.command(
@@ -476,12 +552,14 @@ def _counted(outcome: Any) -> str:
     return ", ".join(parts)
 
 
-def _two(text: str, kind: type, option: str) -> Any:
+def _numbers(text: str, kind: type, option: str, count: int) -> Any:
     try:
-        first, second = (kind(part) for part in text.split(","))
+        numbers = tuple(kind(part) for part in text.split(","))
     except ValueError:
-        raise InputError(f"{option}: expected two numbers with a comma between them, not {text}") from None
-    return (_positive(first, option), _positive(second, option))
+        numbers = ()
+    if len(numbers) != count:
+        raise InputError(f"{option}: expected {count} numbers with commas between them, not {text}")
+    return tuple(_positive(number, option) for number in numbers)
 
 
 def _positive(number: Any, option: str) -> Any:

@@ -184,7 +184,7 @@ def write_volume(
     units = like.units[0] if like else "mm"
     text = _json(sidecar_path(path), _sidecar(data, _voxel_mm(affine, units), content, sidecar or {}))
     # the sidecar first: a volume that is there has its sidecar
-    with _replacing(path) as file, _replacing(sidecar_path(path)) as beside:
+    with replacing(path) as file, replacing(sidecar_path(path)) as beside:
         beside.write(text.encode())
         if path.name.endswith(".gz"):
             with gzip.GzipFile("", "wb", compresslevel=1, fileobj=file, mtime=0) as compressed:
@@ -274,7 +274,7 @@ def write_text(path: str | os.PathLike[str], text: str) -> None:
     ...     (Path(folder) / "note.txt").read_text()
     'SNR 35'
     """
-    with _replacing(Path(path)) as file:
+    with replacing(Path(path)) as file:
         file.write(text.encode())
 
 
@@ -557,7 +557,7 @@ def _sidecar(
 
 
 @contextmanager
-def _replacing(path: Path) -> Iterator[IO[bytes]]:
+def replacing(path: Path) -> Iterator[IO[bytes]]:
     """Write to a temporary file in the same folder; it takes the place of `path` when all has gone well."""
     temporary = path.with_name(f".skipline-{secrets.token_hex(8)}.part")
     try:

@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 import tomllib
-from collections.abc import Iterable
-from typing import Any
+from collections.abc import Iterable, Mapping
+from typing import TYPE_CHECKING, Any
 
 from .. import InputError
+
+if TYPE_CHECKING:
+    from pydantic import BaseModel
 
 
 def parse_value(text: str) -> Any:
@@ -48,20 +51,49 @@ def with_options(kind: str, name: str, options: Iterable[str]) -> Any:
         ...
     skipline.InputError: --option weigth: is not a key here; did you mean "weight"?
     """
+    from . import plugins
+
+    return validated(plugins.load(kind, name), options, "--option", {})
+
+
+def validated(model: type[BaseModel], options: Iterable[str], flag: str, values: Mapping[str, Any]) -> Any:
+    """Return a model of the given values and options.
+
+    Parameters
+    ----------
+    model : type of BaseModel
+    options : iterable of str
+        ``key=value`` each.
+    flag : str
+        Where the options were given, for messages.
+    values : mapping
+        Values that are given in another way.
+
+    Raises
+    ------
+    InputError
+        No such option, or a value that does not fit; the nearest choice is named.
+
+    Examples
+    --------
+    >>> from skipline.recon.study.settings import Sampling
+    >>> given = {"pattern": "regular-lines", "acceleration": 2.0}
+    >>> validated(Sampling, ["partial_fourier=0.75"], "--constraint", given).partial_fourier
+    0.75
+    """
     from pydantic import ValidationError
 
-    from . import plugins
     from .study.explain import first_problem
 
-    model = plugins.load(kind, name)
-    values = {}
+    given = dict(values)
     for option in options:
         key, equals, text = option.partition("=")
         if not equals or not key.strip():
-            raise InputError(f"--option {option}: expected key=value, such as weight=2")
-        values[key.strip()] = parse_value(text)
+            raise InputError(f"{flag} {option}: expected key=value, such as weight=2")
+        value = parse_value(text)
+        given[key.strip()] = tuple(value) if isinstance(value, list) else value
     try:
-        return model.model_validate(values, strict=True)
+        return model.model_validate(given, strict=True)
     except ValidationError as error:
         keys, message = first_problem(error, model)
-        raise InputError(f"--option {'.'.join(map(str, keys))}: {message}") from None
+        raise InputError(f"{flag} {'.'.join(map(str, keys))}: {message}") from None

@@ -36,6 +36,9 @@ _BUILT_IN: dict[str, dict[str, str]] = {
         "variable-density-lines": "masks.lines:VariableDensityLines",
         "variable-density-points": "masks.points:VariableDensityPoints",
         "regular-lines": "masks.lines:RegularLines",
+        "poisson-disc": "masks.poisson_disc:PoissonDisc",
+        "regular-points": "masks.lattice:RegularPoints",
+        "golden-spokes": "masks.spokes:GoldenSpokes",
     },
     "phantoms": {
         "shepp-logan": "phantoms.shepp_logan:shepp_logan_phantom",
@@ -80,7 +83,7 @@ def patterns() -> list[str]:
 
     Examples
     --------
-    >>> patterns()
+    >>> patterns()[:3]
     ['variable-density-lines', 'variable-density-points', 'regular-lines']
     """
     return _names("patterns")

@@ -12,6 +12,7 @@ from typing import Any
 
 from pydantic import BaseModel
 
+from .encoding import CONSTRAINTS
 from .settings import Acquisition, Reference, Sampling
 
 RESULT_VERSION = 1
@@ -69,6 +70,7 @@ class Case:
     draw: int
     noise_draw: int
     digests: tuple[tuple[str, str], ...] = ()
+    law_digest: str = ""
 
     @cached_property
     def settings(self) -> dict[str, Any]:
@@ -83,7 +85,7 @@ class Case:
         settings |= _plain(self.acquisition, "coils", "snr")
         if self.acquisition.maps:
             settings["maps"] = Path(self.acquisition.maps).name
-        settings |= _plain(self.sampling, "pattern", "phase_encode", "calibration")
+        settings |= _plain(self.sampling, "pattern", "phase_encode", *CONSTRAINTS)
         _add(settings, "pattern", self.pattern)
         settings |= _plain(self.sampling, "acceleration")
         settings |= {"draw": self.draw, "noise_draw": self.noise_draw, "method": self.method_name}
@@ -105,7 +107,8 @@ class Case:
     @cached_property
     def id(self) -> str:
         """First 12 hexadecimal digits of the SHA-256 of all that determines the result."""
-        return _hash({"seed": self.seed, **self._content(self.settings)})
+        settings = self.settings | ({"law": self.law_digest} if self.law_digest else {})
+        return _hash({"seed": self.seed, **self._content(settings)})
 
     @cached_property
     def reference_id(self) -> str:

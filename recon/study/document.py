@@ -16,15 +16,20 @@ from pathlib import Path
 from typing import Any
 
 from ... import InputError
+from ...masks.variable_density import FILES as LAW_FILES
 from ..options import parse_value
 
 Keys = tuple[str | int, ...]
 """The way to a value: ``("reconstruction", 1, "weight")``."""
 
-PATHS: frozenset[Keys] = frozenset(
-    {("reference", "image"), ("reference", "phase"), ("reference", "kspace"), ("acquisition", "maps")}
-)
-"""The keys whose values are paths of files."""
+PATHS: dict[Keys, tuple[str, ...]] = {
+    ("reference", "image"): ("",),
+    ("reference", "phase"): ("",),
+    ("reference", "kspace"): ("",),
+    ("acquisition", "maps"): ("",),
+    ("sampling", "law"): LAW_FILES,
+}
+"""The keys whose values are paths of files, and the endings by which a path is known from another text."""
 
 _BARE_KEY = r"""(?:[A-Za-z0-9_-]+|"[^"\n]*"|'[^'\n]*')"""
 _DOTTED_KEY = rf"{_BARE_KEY}(?:[ \t]*\.[ \t]*{_BARE_KEY})*"
@@ -167,17 +172,17 @@ def _syntax_error(text: str, path: Path, message: str) -> str:
 
 
 def _make_absolute(values: Mapping[str, Any], folder: Path) -> None:
-    for table, key in PATHS:
+    for (table, key), endings in PATHS.items():
         entries = values.get(str(table))
         if isinstance(entries, dict) and key in entries:
-            entries[key] = _absolute(entries[key], folder)
+            entries[key] = _absolute(entries[key], folder, endings)
 
 
-def _absolute(value: Any, folder: Path) -> Any:
+def _absolute(value: Any, folder: Path, endings: tuple[str, ...]) -> Any:
     """Return the same path or paths, relative to `folder`; what is no path is left to validation."""
     if isinstance(value, list):
-        return [_absolute(item, folder) for item in value]
-    if isinstance(value, str) and value:
+        return [_absolute(item, folder, endings) for item in value]
+    if isinstance(value, str) and value and value.endswith(endings):
         return str((folder / Path(value).expanduser()).absolute())
     return value
 
@@ -193,7 +198,7 @@ def _override(values: dict[str, Any], overrides: Iterable[str]) -> tuple[dict[st
         keys: Keys = tuple(int(part) if part.isdigit() else part for part in name.split("."))
         value = parse_value(text)
         if keys in PATHS:
-            value = _absolute(value, Path.cwd())
+            value = _absolute(value, Path.cwd(), PATHS[keys])
         _put(values, keys, value)
         overridden.add(keys)
     return values, frozenset(overridden)

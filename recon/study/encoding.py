@@ -2,9 +2,15 @@
 
 from __future__ import annotations
 
+from typing import TYPE_CHECKING
+
 import numpy as np
 
 from ... import InputError
+
+if TYPE_CHECKING:
+    from ...masks.grid import Grid
+    from .settings import Sampling
 
 Shape = tuple[int, int, int]
 
@@ -60,6 +66,35 @@ def grid_shape(phase_encode: str, shape: Shape) -> tuple[int, ...]:
     (96, 64)
     """
     return tuple(shape["xyz".index(axis)] for axis in phase_encode)
+
+
+CONSTRAINTS = (
+    "calibration", "calibration_shape", "shutter", "partial_fourier", "largest_gap", "skip_conjugates",
+    "train_length",
+)  # fmt: skip
+"""The keys of a study's sampling table that say what the sequence permits and demands."""
+
+
+def phase_encode_grid(sampling: Sampling, shape: Shape) -> Grid:
+    """Return the phase-encode grid of a sampling, with its constraints.
+
+    Raises
+    ------
+    InputError
+        Constraints that cannot be met together.
+
+    Examples
+    --------
+    >>> from skipline.recon.study.settings import Sampling
+    >>> sampling = Sampling(pattern="regular-lines", phase_encode="y", acceleration=2, partial_fourier=0.75)
+    >>> int(phase_encode_grid(sampling, (64, 48, 1)).allowed().sum())
+    36
+    """
+    from ...masks.grid import Grid
+
+    assert sampling.phase_encode is not None  # the plan fills it in
+    constraints = {name: getattr(sampling, name) for name in CONSTRAINTS}
+    return Grid(grid_shape(sampling.phase_encode, shape), **constraints)
 
 
 def on_kspace(mask: np.ndarray, phase_encode: str) -> np.ndarray:

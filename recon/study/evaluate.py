@@ -14,7 +14,7 @@ import numpy as np
 from ... import CAUTION, __version__
 from .. import plugins
 from .cases import Case
-from .encoding import grid_shape, on_kspace
+from .encoding import on_kspace, phase_encode_grid
 from .references import Prepared, prepare
 from .seeds import generator
 
@@ -110,12 +110,10 @@ def prepared_for(case: Case) -> Prepared:
 
 def draw_mask(case: Case, prepared: Prepared) -> np.ndarray:
     """Draw the mask of a case, broadcastable to (x, y, z); all methods of a draw get the same."""
-    from ...masks.grid import Grid
-
     x, y, z = prepared.image.shape
     axes = case.sampling.phase_encode
     assert axes is not None  # the plan fills it in
-    grid = Grid(grid_shape(axes, (x, y, z)), case.sampling.calibration)
+    grid = phase_encode_grid(case.sampling, (x, y, z))
     pattern: Any = case.pattern
     mask = pattern.draw(grid, case.sampling.acceleration, generator(case.seed, "mask", case.draw))
     return on_kspace(mask, axes)

@@ -14,8 +14,8 @@ from ... import InputError
 from .. import plugins
 from . import references
 from .cases import Case
-from .document import Document, Keys, read_document
-from .encoding import grid_shape, phase_encode_axes
+from .document import LAW_FILES, Document, Keys, read_document
+from .encoding import CONSTRAINTS, phase_encode_axes, phase_encode_grid
 from .explain import first_problem, nearest, shown
 from .settings import About, Acquisition, Limit, Reference, Sampling
 from .sweep import combinations
@@ -31,7 +31,7 @@ class Setting:
 
     reference: Reference
     acquisition: Acquisition
-    samplings: tuple[tuple[Sampling, BaseModel], ...]
+    samplings: tuple[tuple[Sampling, BaseModel, str], ...]
     digests: tuple[tuple[str, str], ...]
 
 
@@ -88,12 +88,12 @@ class Study:
     def _all_cases(self) -> Iterator[Case]:
         for setting in self.settings:
             noise_draws = 1 if setting.acquisition.snr is None else setting.acquisition.noise_draws
-            for sampling, pattern in setting.samplings:
+            for sampling, pattern, law_digest in setting.samplings:
                 draws = sampling.draws if getattr(pattern, "random", True) else 1
                 for draw, noise_draw, method in product(range(draws), range(noise_draws), self.methods):
                     yield Case(
                         self.about.seed, setting.reference, setting.acquisition, sampling, pattern,
-                        *method, draw, noise_draw, setting.digests,
+                        *method, draw, noise_draw, setting.digests, law_digest,
                     )  # fmt: skip
 
 
@@ -281,20 +281,32 @@ def _setting(
         "maps": acquisition.maps
     }
     digests = tuple((key, references.digest(path)) for key, path in files.items() if path)
-    fitted = tuple((_fit(document, sampling, pattern, shape), pattern) for _, sampling, pattern in samplings)
+    fitted = tuple(
+        (_fit(document, sampling, pattern, shape), pattern, _law_digest(document, pattern))
+        for _, sampling, pattern in samplings
+    )
     return Setting(reference, acquisition.model_copy(update={"coils": coils}), fitted, digests)
+
+
+def _law_digest(document: Document, pattern: Any) -> str:
+    """Return the digest of the file that a pattern's density law comes from; nothing without one."""
+    path = getattr(pattern, "law", "")
+    return _placed(document, ("sampling", "law"), references.digest, path) if path.endswith(LAW_FILES) else ""
 
 
 def _fit(document: Document, sampling: Sampling, pattern: Any, shape: tuple[int, int, int]) -> Sampling:
     """Choose the phase-encode axes, and check that the grid can give the acceleration."""
-    from ...masks.grid import Grid
-
     axes = _placed(
         document, ("sampling", "phase_encode"), phase_encode_axes, sampling.phase_encode, pattern.axes, shape
     )
-    grid = _placed(document, ("sampling", "calibration"), Grid, grid_shape(axes, shape), sampling.calibration)
+    sampling = sampling.model_copy(update={"phase_encode": axes})
+    try:
+        grid = phase_encode_grid(sampling, shape)
+    except InputError as error:
+        named = [name for name in CONSTRAINTS if name in str(error)]
+        raise document.refusal(("sampling", named[0] if named else "calibration"), str(error)) from None
     _placed(document, ("sampling", "acceleration"), grid.samples, sampling.acceleration)
-    return sampling.model_copy(update={"phase_encode": axes})
+    return sampling
 
 
 def _placed(document: Document, keys: Keys, function: Any, *arguments: Any) -> Any:

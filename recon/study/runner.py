@@ -20,7 +20,7 @@ from .. import plugins
 from ..files import write_json, write_text
 from . import results
 from .cases import Case
-from .evaluate import evaluate, prepared_for
+from .evaluate import draw_mask, evaluate, prepared_for
 from .machine import cores, threads_of_children
 from .plan import Study
 from .tables import Row, cases_csv, summary_csv
@@ -158,6 +158,9 @@ def _prepare(study: Study, folder: Path, cases: list[Case]) -> None:
     }
     for case in missing.values():
         prepared_for(case)
+    # what a pattern cannot give is refused before anything is written
+    for case in {(case.reference, case.sampling, case.pattern): case for case in cases}.values():
+        draw_mask(case, prepared_for(case))
     results.open_folder(folder, study)
     for path, case in missing.items():
         results.write_reference(path, case, prepared_for(case))

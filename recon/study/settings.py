@@ -177,6 +177,24 @@ class Sampling(_Table, frozen=True):
         description="Fully sampled lines at the centre of k-space; for points the side of a square, or "
         "[[sides, of a rectangle]].",
     )
+    calibration_shape: Literal["rectangle", "ellipse"] = Field(
+        default="rectangle", description="The whole calibration block, or the ellipse inscribed in it."
+    )
+    shutter: bool = Field(
+        default=False, description="Take nothing outside the ellipse through the ends of the two axes."
+    )
+    partial_fourier: float = Field(
+        default=1.0, gt=0.5, le=1, description="Fraction of the first phase-encode axis that is taken."
+    )
+    largest_gap: int | None = Field(
+        default=None, ge=1, description="Most positions from a taken line to the next; lines only."
+    )
+    skip_conjugates: bool = Field(
+        default=False, description="Never take both k and -k outside the calibration region."
+    )
+    train_length: int | None = Field(
+        default=None, ge=1, description="Length of the echo trains; the number of samples is a multiple."
+    )
     acceleration: float = Field(
         ge=1,
         allow_inf_nan=False,

@@ -54,7 +54,7 @@ def scan(tmp_path):
         == 0
     )
     line = f"mask variable-density-lines --output {files['mask']} --like {files['kspace']} --acceleration 2"
-    assert run_command([*line.split(), "--calibration", "12", "--option", "power=1.5"]) == 0
+    assert run_command([*line.split(), "--constraint", "calibration=12", "--option", "power=1.5"]) == 0
     return files
 
 
@@ -301,3 +301,70 @@ def test_ctrl_c_keeps_what_is_finished(tmp_path):
     done = subprocess.run(command, capture_output=True, text=True, timeout=120)
     assert done.returncode == 0, done.stderr
     assert f"{60 - len(kept)} cases done, {len(kept)} were finished before" in done.stdout
+
+
+def test_a_mask_for_the_sequence(tmp_path, capsys):
+    """NIfTI, table, picture; judged again from both files with the same words."""
+    files = {name: tmp_path / name for name in ("mask.nii.gz", "order.tsv", "mask.png")}
+    line = (
+        f"mask poisson-disc --matrix 1,64,48 --phase-encode yz --acceleration 6 --constraint calibration=8 "
+        f"--constraint train_length=16 --order centre-out --effective-echo 3 --output {files['mask.nii.gz']} "
+        f"--table {files['order.tsv']} --figure {files['mask.png']} --best-of 3"
+    )
+    assert run_command(line.split()) == 0
+    words = capsys.readouterr().out.splitlines()
+    assert words[0] == "512 of 3072 samples, acceleration 6"
+    assert words[-1].startswith("32 echo trains of 16, effective echo 3")
+    sidecar = json.loads((tmp_path / "mask.json").read_text())
+    assert sidecar["Judgement"]["samples"] == 512
+    assert sidecar["PhaseEncodingDirection"] == "j"
+    assert "not for diagnosis" in json.loads((tmp_path / "order.json").read_text())["Caution"]
+    assert files["mask.png"].read_bytes()[:4] == b"\x89PNG"
+    for name in ("mask.nii.gz", "order.tsv"):
+        assert run_command(["mask", "--judge", str(files[name])]) == 0
+        assert capsys.readouterr().out.splitlines() == words[:-1]
+
+
+def test_masks_that_cannot_be_made(refused, tmp_path):
+    line = ["mask", "variable-density-lines", "--matrix", "64,64,1", "--output", tmp_path / "m.nii"]
+    lines = [*line, "--acceleration", 4]
+    gap = refused(*lines, "--constraint", "largest_gap=3")
+    assert "largest_gap 3 takes" in gap
+    assert "at most R = " in gap
+    assert 'did you mean "largest_gap"' in refused(*lines, "--constraint", "largst_gap=3")
+    assert "either --like FILE or --matrix" in refused(*line[:2], *line[4:], "--acceleration", 4)
+    assert "expected 3 numbers" in refused(*lines[:3], "64", *lines[4:])
+    assert "another name before .tsv" in refused(*lines, "--table", tmp_path / "m.tsv")
+    assert "a pattern, --output and --acceleration" in refused("mask")
+    table = tmp_path / "t.tsv"
+    table.write_text("ky\n1\n1\n")
+    (tmp_path / "t.json").write_text('{"GridShape": [8]}')
+    assert "line 3" in refused("mask", "--judge", table)
+    law = tmp_path / "law.txt"
+    law.write_text("1\n-1\n")
+    assert "law" in refused(*lines, "--option", f"law={law}")
+    assert sorted(path.name for path in tmp_path.iterdir()) == ["law.txt", "t.json", "t.tsv"]
+
+
+def test_constraints_are_sweep_axes_and_a_law_file_counts_by_its_content(tmp_path, capsys):
+    study = tmp_path / "study.toml"
+    study.write_text((CONFIGS / "first-study.toml").read_text().replace("power = 2.0", 'law = "law.txt"'))
+    np.savetxt(tmp_path / "law.txt", 1.0 / (1 + np.abs(np.arange(64) - 32)))
+    line = [
+        "--set",
+        'sampling.pattern="variable-density-lines"',
+        "--set",
+        "sampling.partial_fourier=[0.75, 1.0]",
+    ]
+    line = [str(study), *SMALL, *line, "--set", "sampling.acceleration=2", "--output", str(tmp_path / "out")]
+    assert run_command(["run", *line]) == 0
+    assert "4 cases done" in capsys.readouterr().out
+    assert run_command(["run", *line]) == 0
+    assert "0 cases done, 4 were finished before" in capsys.readouterr().out
+    np.savetxt(tmp_path / "law.txt", 1.0 / (2 + np.abs(np.arange(64) - 32)))
+    assert run_command(["run", *line]) == 0
+    assert "4 cases done" in capsys.readouterr().out
+    with pytest.MonkeyPatch.context() as patch:
+        patch.chdir(tmp_path)
+        assert run_command(["check", str(study), *SMALL, "--set", "sampling.largest_gap=1"]) == 2
+    assert "largest_gap" in capsys.readouterr().err

@@ -70,9 +70,16 @@ def test_more_draws_begin_with_the_same_draws() -> None:
     few, many = (best_of(*CASES[0], draws=n, seed=5) for n in (300, 700))
     np.testing.assert_array_equal(few.scores, many.scores[:300])
     assert many.score <= few.score
-    np.testing.assert_array_equal(many.mask, CASES[0][0].draw(*CASES[0][1:], nth_generator(5, many.index)))
-    assert many.index >= 300  # so that it is of a later batch; another seed, should it fail
     assert len(np.unique(many.scores)) > 600  # and each is a draw of its own
+
+
+def test_the_winner_may_be_of_a_later_batch() -> None:
+    pattern, grid, acceleration = CASES[0]
+    found = ((seed, best_of(pattern, grid, acceleration, draws=600, seed=seed)) for seed in range(20))
+    seed, best = next((seed, best) for seed, best in found if best.index >= 300)
+    np.testing.assert_array_equal(
+        best.mask, pattern.draw(grid, acceleration, nth_generator(seed, best.index))
+    )
 
 
 def test_the_same_in_another_process() -> None:

@@ -109,6 +109,8 @@ def test_acceleration_is_met_and_no_constraint_broken_or_the_message_names_them(
             break
         except InputError as error:
             message = refusal(error)
+            if not pattern.random and message.endswith("it cannot be had at any R"):
+                return
             offered = re.search(r"at (?:most|least) R = ([\d.]+) can be had$", message)
             assert offered, message
             acceleration = float(offered[1])

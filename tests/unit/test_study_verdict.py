@@ -184,7 +184,8 @@ def test_cases_table():
     ]
     text = cases_csv(rows, ["nrmse", "ssim"])
     assert text.startswith(
-        "reference,coils,snr,pattern,calibration,power,acceleration,acceleration_achieved,draw,noise_draw,method,"
+        "reference,coils,snr,pattern,calibration,calibration_shape,shutter,partial_fourier,skip_conjugates,power,"
+        "acceleration,acceleration_achieved,draw,noise_draw,method,"
         "solver,method_power,nrmse,ssim,iterations,converged,stopped,seconds,error,id,note\n"
     )
     zero, first, second, failed = table(text)
