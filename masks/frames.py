@@ -1,7 +1,7 @@
 """Time frames: masks that complement each other, for dynamic scans.
 
-Neighbouring frames should share as few samples as they can, so that a few of them together cover k-space as
-the pattern's density has it. How that is done depends on the pattern:
+Neighbouring frames should share as few samples as they can, so that a few of them together cover k-space
+about as the pattern's density has it. How that is done, and how exactly, depends on the pattern:
 
 - Random samples of a density: one systematic sample that turns. The probabilities are laid end to end on a
   circle of circumference 1 (Madow 1949), and frame t takes the points under the hand of a clock that turns by
@@ -12,10 +12,11 @@ the pattern's density has it. How that is done depends on the pattern:
 - Regular lines: the same with the lines in their order. That is a comb, shifted by whole lines where R
   permits.
 - Lines with a largest gap, and combs that a constraint forbids: random lines whose odds grow with their lag
-  behind the density.
+  behind the density. The density is met in the long run only, and not exactly.
 - Regular points: displaced lattices; each point has its turn once in a period.
 - Spokes: one sequence of golden angles that goes on.
-- Poisson-disc: the darts are thrown first where one is due.
+- Poisson-disc: the darts are thrown first where one is due. Each frame keeps its distances; its density is
+  near that of single draws, not the same.
 """
 
 from __future__ import annotations
@@ -38,8 +39,10 @@ def draw_frames(
 ) -> NDArray[np.bool_]:
     """Draw a series of masks such that any neighbouring frames together cover k-space evenly.
 
-    Each frame meets the acceleration to the nearest sample, takes the calibration region, keeps what the grid
-    demands, and has the density of the pattern. A pattern's option to spread the samples has no effect.
+    Each frame meets the acceleration to the nearest sample, takes the calibration region and keeps what the
+    grid demands. Variable-density frames without a largest gap have exactly the inclusion probabilities of
+    the pattern; with a largest gap, and for poisson-disc, the density is only near that of single draws. A
+    pattern's option to spread the samples has no effect.
 
     Parameters
     ----------

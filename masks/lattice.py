@@ -202,7 +202,7 @@ class RegularPoints(Pattern):
             )
         # The lattice as computed, if it has the number of samples; else enclose the spacing close by, and
         # bisect.
-        narrow, wide, spacing = 1.0, inf, max(area / step, 1.0)
+        narrow, wide, spacing = 0.0, inf, max(area / step, 1.0)  # 0: none found that is narrow enough
         while wide - narrow > 1e-6 and spacing < 4 * max(grid.shape):
             lattice = _stretched(step, spacing, shift)
             surplus = points(lattice).size - missing
@@ -214,7 +214,7 @@ class RegularPoints(Pattern):
                 break
             if wide == inf:
                 spacing = 1.05 * narrow
-            elif narrow == 1:
+            elif narrow == 0:
                 spacing = max(wide / 1.05, 1.0)
             else:
                 spacing = (narrow + wide) / 2

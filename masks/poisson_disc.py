@@ -32,6 +32,11 @@ class PoissonDisc(Pattern):
     one outside. All this is exact. Distances are measured along axes of different steps as `aspect` says;
     k-space is not taken as periodic.
 
+    Distances on a grid are discrete, so the density does not follow the radius smoothly: it falls in steps,
+    seen as rings, where the radius passes 1, sqrt 2, 2, ... points; near the centre by more than a half. On
+    192 x 192 points at R = 6 a random excess of up to 50% would smooth them, but make the smallest radius a
+    fifth shorter.
+
     Sources: Bridson, SIGGRAPH sketches (2007); the larger of two radii: Mitchell, Rand, Ebeida & Bajaj,
     Canadian Conf. Comput. Geom. (2012).
 
@@ -162,7 +167,8 @@ class PoissonDisc(Pattern):
         # The number of darts falls with the scale, though not at every step: enclose the scale, then bisect,
         # and keep the nearest number from above.
         step0, step1 = steps(grid, self.aspect)
-        smallest = min(step0, step1) / float(law.max())  # discs so small that nothing is forbidden
+        # discs so small that nothing is forbidden, whatever the rounding
+        smallest = (1 - 1e-9) * min(step0, step1) / float(law.max())
         scale = max(float(_PACKING * step0 * step1 * np.sum(law[~closed] ** -2.0) / missing) ** 0.5, smallest)
         low, high, surplus = 0.0, inf, inf
         taken, radius = closed, 0.0

@@ -30,9 +30,10 @@ class Acquired:
         Centred k-space on all three axes (an axis of length 1 is its own transform); what the mask leaves
         out is not read.
     mask : bool array, broadcastable to ``(x, y, z)``
-        The sampled points; an axis of length 1 is sampled fully.
+        The sampled points: not zero where a sample was taken; an axis of length 1 is sampled fully. Kept as
+        bool, reduced to length 1 along each axis where it does not change.
     maps : complex array ``(coil, x, y, z)``, optional
-        Coil sensitivities; needed with more than one coil.
+        Coil sensitivities, on any scale; needed with more than one coil.
     sigma : float, optional
         Standard deviation of the real (and of the imaginary) part of the noise in k-space.
 
@@ -55,16 +56,16 @@ class Acquired:
     sigma: float | None = None
 
     def __post_init__(self):
-        if self.kspace.ndim != 4:
+        if self.kspace.ndim != 4 or 0 in self.kspace.shape:
             raise InputError(f"k-space has shape {self.kspace.shape}, expected (coil, x, y, z)")
-        if self.mask.ndim != 3 or any(
-            m not in (1, n) for m, n in zip(self.mask.shape, self.shape, strict=True)
-        ):
-            raise InputError(
-                f"the mask has shape {self.mask.shape}, which does not fit k-space of {self.shape}"
-            )
-        if not self.mask.any():
+        mask = np.asarray(self.mask) != 0
+        if not fits(mask, self.shape):
+            raise InputError(f"the mask has shape {mask.shape}, which does not fit k-space of {self.shape}")
+        if not mask.any():
             raise InputError("the mask is empty: no sample is taken")
+        object.__setattr__(self, "mask", without_full_axes(mask))
+        if np.any(self.kspace[~np.broadcast_to(mask, self.kspace.shape)]):
+            object.__setattr__(self, "kspace", np.where(mask, self.kspace, self.kspace.dtype.type(0)))
         if not np.isfinite(self.kspace).all():
             raise InputError("k-space holds NaN or infinite values")
         if self.maps is None:

@@ -204,18 +204,22 @@ def phantom(
     import numpy as np
 
     from ..phantoms.acquisition import complex_noise
-    from .files import write_volume
+    from .files import check_outputs, write_volume
     from .fourier import to_image
+    from .options import validated
     from .study.references import complete, prepare
     from .study.seeds import generator
-    from .study.settings import Reference
+    from .study.settings import Acquisition, Reference
 
+    check_outputs({"--output": output, "--kspace": kspace, "--maps": maps})
     if maps is not None and coils == 1:
         raise InputError("--maps: one coil has no map here; ask for more with --coils")
     fov = None if field_of_view_mm is None else _numbers(field_of_view_mm, float, "--field-of-view-mm", 2)
+    size = _numbers(matrix, int, "--matrix", 2)
     reference = complete(
-        Reference(phantom=name, matrix=_numbers(matrix, int, "--matrix", 2), field_of_view_mm=fov)
+        validated(Reference, values={"phantom": name, "matrix": size, "field_of_view_mm": fov})
     )
+    validated(Acquisition, values={"coils": coils})
     prepared = prepare(reference, coils, None)
     full, image = prepared.kspace, prepared.image
     sigma = 0.0
@@ -314,8 +318,17 @@ def mask(
     scanner's own safety checks stay in force.
     """
     from .design import MaskTask, design, read_design, summary
-    from .files import sidecar_path
+    from .files import check_outputs
+    from .options import parse_value
+    from .report.mask_figure import ENDINGS
 
+    # an option may be a file, such as a law
+    given = (Path(str(parse_value(option.partition("=")[2]))) for option in options or ())
+    check_outputs(
+        {"--output": output, "--table": table, "--figure": figure},
+        (like, judge, *given),
+        {"--table": (".tsv",), "--figure": ENDINGS},
+    )
     task = None
     if judge is not None:
         if pattern is not None:
@@ -342,10 +355,6 @@ def mask(
     judgement = found.judgement()
     about = {"Pattern": name, "Seed": seed, "Draw": found.draw, "Acceleration": judgement.acceleration}
     if task is not None and output is not None:
-        if table is not None and table.with_suffix(".json") == sidecar_path(output):
-            raise InputError(
-                f"--table {table} has the sidecar of {output}; expected another name before .tsv"
-            )
         task.write(output, found, about | {"Judgement": judgement.to_dict()})
     if table is not None and trains is not None:
         from ..masks.table import write_table
@@ -408,15 +417,13 @@ def recon(
     import numpy as np
 
     from .acquired import Acquired, without_full_axes
-    from .files import read_volume, write_volume
-    from .kspace_file import read_kspace
+    from .files import check_outputs, read_volume, write_volume
+    from .kspace_file import not_encoded, read_kspace
     from .options import with_options
     from .study.machine import cores
 
     chosen = with_options("methods", method, options or ())
-    for path in (kspace, mask, maps):
-        if path is not None and output.exists() and path.exists() and path.samefile(output):
-            raise InputError(f"--output {output} is one of the inputs; expected another file")
+    check_outputs({"--output": output}, (kspace, mask, maps))
     source = read_kspace(kspace, encoded_axes)
     data = source.data
     points = read_volume(mask, allow_zero=True).data != 0
@@ -429,6 +436,14 @@ def recon(
     if points.shape != data.shape[1:]:
         sizes = [" x ".join(map(str, shape)) for shape in (points.shape, data.shape[1:])]
         raise InputError(f"{mask} is {sizes[0]} and {kspace} is {sizes[1]}; expected the same grid")
+    for axis in not_encoded(
+        kspace, data.shape, encoded_axes
+    ):  # the mask is of slices there, the data of k-space
+        if (points != points.take([0], "xyz".index(axis))).any():
+            raise InputError(
+                f"{mask} differs along {axis}, which {kspace} does not encode; expected the same mask for "
+                "every slice"
+            )
     acquired = Acquired(data, without_full_axes(points), sensitivities, sigma)
     measured = np.any(data != 0, axis=0)
     empty = np.count_nonzero(points & ~measured) / np.count_nonzero(points)
@@ -476,14 +491,13 @@ def compare(
 
     Magnitudes are compared; an error of the phase alone does not show.
     """
-    import numpy as np
-
     from ..phantoms.acquisition import support
     from . import plugins
-    from .files import read_volume, write_volume
+    from .files import agree, check_outputs, read_volume, write_volume
     from .measures import error_map
     from .study.results import finite
 
+    check_outputs({"--error": error}, (reference, image))
     truth, other = read_volume(reference), read_volume(image, allow_zero=True)
     for volume in (truth, other):
         if volume.data.ndim != 3:
@@ -491,7 +505,7 @@ def compare(
     if truth.data.shape != other.data.shape:
         sizes = [" x ".join(map(str, volume.data.shape)) for volume in (truth, other)]
         raise InputError(f"{image} is {sizes[1]} and {reference} is {sizes[0]}; expected the same grid")
-    if not np.allclose(truth.affine, other.affine, atol=1e-3 * max(truth.voxel_mm)):
+    if not agree(other.affine_mm, truth.affine_mm, 0.01):
         raise InputError(f"{image} and {reference} lie at different places; expected equal affines")
     inside = support(truth.data)
     measures = {name: plugins.load("measures", name) for name in plugins.measures()}

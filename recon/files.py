@@ -12,8 +12,9 @@ import gzip
 import json
 import os
 import secrets
-from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+import tempfile
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import IO, Any, Literal
@@ -75,6 +76,11 @@ class Volume:
     def voxel_mm(self) -> tuple[float, float, float]:
         """Voxel size along x, y, z in mm, by the affine; unknown units are taken for mm."""
         return _voxel_mm(self.affine, self.units[0])
+
+    @property
+    def affine_mm(self) -> np.ndarray:
+        """Voxel index to position in mm; unknown units are taken for mm."""
+        return np.diag([*[_MM.get(self.units[0], 1.0)] * 3, 1.0]) @ self.affine
 
 
 def read_volume(
@@ -184,7 +190,7 @@ def write_volume(
     units = like.units[0] if like else "mm"
     text = _json(sidecar_path(path), _sidecar(data, _voxel_mm(affine, units), content, sidecar or {}))
     # the sidecar first: a volume that is there has its sidecar
-    with replacing(path) as file, replacing(sidecar_path(path)) as beside:
+    with _replacing_all(sidecar_path(path), path) as (beside, file):
         beside.write(text.encode())
         if path.name.endswith(".gz"):
             with gzip.GzipFile("", "wb", compresslevel=1, fileobj=file, mtime=0) as compressed:
@@ -194,14 +200,16 @@ def write_volume(
 
 
 def sidecar_path(path: str | os.PathLike[str]) -> Path:
-    """Return where the sidecar of a volume is.
+    """Return where the sidecar of a volume, or of a sampling table, is.
 
     Examples
     --------
-    >>> sidecar_path("head.nii.gz").name, sidecar_path("head.t1.nii").name
-    ('head.json', 'head.t1.json')
+    >>> sidecar_path("head.nii.gz").name, sidecar_path("head.t1.nii").name, sidecar_path("order.tsv").name
+    ('head.json', 'head.t1.json', 'order.json')
     """
     path = Path(path)
+    if path.suffix == ".tsv":
+        return path.with_suffix(".json")
     stem = path.name.removesuffix(".gz").removesuffix(".nii").removesuffix(".json")
     return path.with_name(f"{stem}.json")
 
@@ -241,6 +249,74 @@ def read_sidecar(path: str | os.PathLike[str]) -> dict[str, Any]:
     if not isinstance(found, dict):
         raise InputError(f"{path} is not a JSON sidecar; expected an object in braces")
     return found
+
+
+def check_outputs(
+    outputs: Mapping[str, Path | None],
+    inputs: Iterable[Path | None] = (),
+    endings: Mapping[str, tuple[str, ...]] | None = None,
+) -> None:
+    """Refuse, before any work, what a command is to write and cannot or must not.
+
+    Parameters
+    ----------
+    outputs : mapping
+        Option to path; None where it was not given.
+    inputs : iterable of Path or None
+        What the command reads. Neither these nor their sidecars may be overwritten.
+    endings : mapping, optional
+        Option to the endings of its names, where it is no NIfTI volume.
+
+    Raises
+    ------
+    InputError
+        An output or its sidecar is an input, an input's sidecar or another output, has a name of another
+        kind, or lies in a folder that is not there or cannot be written to.
+
+    Examples
+    --------
+    >>> check_outputs({"--output": Path("a.nii"), "--kspace": Path("a.nii.gz")})
+    Traceback (most recent call last):
+        ...
+    skipline.InputError: the sidecar of --kspace a.nii.gz is that of --output a.nii; expected another name
+    """
+    taken: dict[Any, str] = {}
+    for path in filter(None, inputs):
+        taken[_identity(sidecar_path(path))] = f"that of {path}"
+    for path in filter(None, inputs):
+        taken[_identity(path)] = "one of the inputs"
+    for option, path in outputs.items():
+        if path is None:
+            continue
+        named = f"{option} {path}"
+        wanted = (endings or {}).get(option, (".nii", ".nii.gz"))
+        if not path.name.endswith(wanted):
+            raise InputError(f"{named}: expected a name that ends in {' or '.join(wanted)}")
+        for file, words in ((path, named), (sidecar_path(path), f"the sidecar of {named}")):
+            if already := taken.get(_identity(file)):
+                raise InputError(f"{words} is {already}; expected another name")
+            _check_place(file)
+        taken[_identity(path)] = f"also {named}"
+        taken[_identity(sidecar_path(path))] = f"that of {named}"
+
+
+def _identity(path: Path) -> Any:
+    """Return what two names of one file have in common."""
+    try:
+        found = path.stat()
+    except OSError:
+        return path.resolve()
+    return found.st_dev, found.st_ino
+
+
+def _check_place(path: Path) -> None:
+    try:
+        if path.is_dir():
+            raise IsADirectoryError(errno.EISDIR, os.strerror(errno.EISDIR))
+        with tempfile.TemporaryFile(dir=path.parent):  # permissions alone do not tell
+            pass
+    except OSError as error:
+        raise InputError(f"{path} cannot be written ({error.strerror or _one_line(error)})") from None
 
 
 def phase_encoding(axes: str) -> dict[str, str]:
@@ -426,7 +502,7 @@ def _with_phase(magnitude: Volume, phase: Volume) -> Volume:
             f"{phase.path} has shape {phase.data.shape}, "
             f"expected that of the magnitude, {magnitude.data.shape}"
         )
-    if not _agree(phase.affine, magnitude.affine, 0.01):
+    if not agree(phase.affine, magnitude.affine, 0.01):
         raise InputError(
             f"{phase.path} lies elsewhere in space than {magnitude.path}; expected the same affine"
         )
@@ -516,7 +592,7 @@ def _place(header: Any, affine: np.ndarray, like: Volume | None) -> None:
         header["pixdim"][1:4] = _column_norms(affine)
         header.set_sform(affine, "scanner")
         header.set_qform(affine, "scanner")
-        if not _agree(header.get_qform(), affine, 1e-4):
+        if not agree(header.get_qform(), affine, 1e-4):
             header.set_qform(None, 0)  # a shear, which it cannot say
         return
     if like.header is None:
@@ -525,14 +601,14 @@ def _place(header: Any, affine: np.ndarray, like: Volume | None) -> None:
     else:
         for field in _GEOMETRY:
             header[field] = like.header[field]
-    if not _agree(affine, like.affine, 1e-6):
+    if not agree(affine, like.affine, 1e-6):
         (qform, qform_code), (_, sform_code) = header.get_qform(coded=True), header.get_sform(coded=True)
         header["pixdim"][1:4] = _column_norms(affine)
         if qform is not None:
             header.set_qform(qform @ np.linalg.inv(like.affine) @ affine, int(qform_code))
         if sform_code > 0:
             header.set_sform(affine, int(sform_code))
-    if not _agree(header.get_best_affine(), affine, 1e-4):
+    if not agree(header.get_best_affine(), affine, 1e-4):
         header.set_sform(affine, "aligned")
 
 
@@ -559,18 +635,31 @@ def _sidecar(
 @contextmanager
 def replacing(path: Path) -> Iterator[IO[bytes]]:
     """Write to a temporary file in the same folder; it takes the place of `path` when all has gone well."""
-    temporary = path.with_name(f".skipline-{secrets.token_hex(8)}.part")
+    with _replacing_all(path) as (file,):
+        yield file
+
+
+@contextmanager
+def _replacing_all(*paths: Path) -> Iterator[Sequence[IO[bytes]]]:
+    """Do so with several files: none takes its place, in this order, before all are on the disk."""
+    parts = {path: path.with_name(f".skipline-{secrets.token_hex(8)}.part") for path in paths}
+    path = paths[-1]
     try:
-        if path.is_dir():
-            raise IsADirectoryError(errno.EISDIR, os.strerror(errno.EISDIR))
+        for path in paths:
+            if path.is_dir():
+                raise IsADirectoryError(errno.EISDIR, os.strerror(errno.EISDIR))
         try:
-            with temporary.open("xb") as file:
-                yield file
-                file.flush()
-                os.fsync(file.fileno())
-            temporary.replace(path)
+            with ExitStack() as stack:
+                files = [stack.enter_context(part.open("xb")) for part in parts.values()]
+                yield files
+                for file in files:
+                    file.flush()
+                    os.fsync(file.fileno())
+            for path, part in parts.items():
+                part.replace(path)
         except BaseException:
-            temporary.unlink(missing_ok=True)
+            for part in parts.values():
+                part.unlink(missing_ok=True)
             raise
     except OSError as error:
         raise InputError(f"{path} cannot be written ({error.strerror or _one_line(error)})") from None
@@ -590,8 +679,15 @@ def _json(path: Path, content: Any) -> str:
         raise InputError(f"{path} cannot be written ({_one_line(error)})") from None
 
 
-def _agree(affine: np.ndarray, other: np.ndarray, voxels: float) -> bool:
-    """Whether two affines differ by less than a share of a voxel at the origin and from voxel to voxel."""
+def agree(affine: np.ndarray, other: np.ndarray, voxels: float) -> bool:
+    """Tell whether two affines differ by less than a share of a voxel, at the origin and from voxel to voxel.
+
+    Examples
+    --------
+    >>> metres = np.diag([0.002, 0.002, 0.005, 1])
+    >>> agree(metres, metres, 0.01), agree(metres + np.diag([0.001, 0, 0, 0]), metres, 0.01)
+    (True, False)
+    """
     single_precision = 1e-6  # of NIfTI-1's numbers
     return np.allclose(affine, other, rtol=single_precision, atol=voxels * _column_norms(other).min())
 

@@ -55,10 +55,7 @@ def read_kspace(path: str | os.PathLike[str], encoded_axes: str | None = None) -
             f"{path} has {len(data)} time frames, dimension 4; expected one (coils are dimension 5)"
         )
     data = data if data.ndim == 4 else data[None]
-    named = read_sidecar(path).get("EncodedAxes", "xyz") if encoded_axes is None else encoded_axes
-    if not isinstance(named, str) or not named or "".join(sorted(set(named) & set("xyz"))) != named:
-        raise InputError(f"{path}: the encoded axes are {named!r}; expected xyz, xy, or another set of these")
-    left = [axis for axis in "xyz" if axis not in named and data.shape["xyz".index(axis) - 3] > 1]
+    left = not_encoded(path, data.shape, encoded_axes)
     if not left:
         return replace(volume, data=data)
 
@@ -67,3 +64,31 @@ def read_kspace(path: str | os.PathLike[str], encoded_axes: str | None = None) -
     data = to_kspace(data, ["xyz".index(axis) - 3 for axis in left])
     note = f"{' and '.join(left)} is not encoded in the file and was transformed"
     return replace(volume, data=data, notes=(*volume.notes, note))
+
+
+def not_encoded(
+    path: str | os.PathLike[str], shape: tuple[int, ...], encoded_axes: str | None = None
+) -> list[str]:
+    """Return the axes, of more than one point, along which a file of k-space holds places.
+
+    Parameters
+    ----------
+    path, encoded_axes
+        As in `read_kspace`.
+    shape : tuple of int
+        Of its data; the last three are x, y, z.
+
+    Raises
+    ------
+    InputError
+        There are no such axes.
+
+    Examples
+    --------
+    >>> not_encoded("a file without sidecar.nii", (4, 64, 64, 20), "xy")
+    ['z']
+    """
+    named = read_sidecar(path).get("EncodedAxes", "xyz") if encoded_axes is None else encoded_axes
+    if not isinstance(named, str) or not named or "".join(sorted(set(named) & set("xyz"))) != named:
+        raise InputError(f"{path}: the encoded axes are {named!r}; expected xyz, xy, or another set of these")
+    return [axis for axis in "xyz" if axis not in named and shape["xyz".index(axis) - 3] > 1]

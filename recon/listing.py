@@ -4,10 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from .. import InputError
 from . import plugins
-
-KINDS = ("patterns", "phantoms", "methods", "measures")
 
 
 def print_listing(kind: str | None = None) -> None:
@@ -23,17 +20,16 @@ def print_listing(kind: str | None = None) -> None:
     >>> print_listing("phantom")
     Traceback (most recent call last):
         ...
-    skipline.InputError: 'phantom' is not a kind; expected one of: patterns, phantoms, methods, measures
+    skipline.InputError: there is no kind "phantom"; did you mean "phantoms"?
     """
     from rich.console import Console
     from rich.text import Text
 
-    if kind is not None and kind not in KINDS:
-        raise InputError(f"{kind!r} is not a kind; expected one of: {', '.join(KINDS)}")
+    listed = {each: plugins.names(each) for each in (plugins.KINDS if kind is None else (kind,))}
     console = Console(highlight=False, soft_wrap=True)
-    for each in KINDS if kind is None else (kind,):
+    for each, names in listed.items():
         console.print(Text(each, style="bold"))
-        for name in getattr(plugins, each)():
+        for name in names:
             found = plugins.load(each, name)
             console.print(Text(f"  {name}", style="cyan"), Text(_summary(each, found)), sep="  ")
             for line in _options(found):

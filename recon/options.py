@@ -53,10 +53,15 @@ def with_options(kind: str, name: str, options: Iterable[str]) -> Any:
     """
     from . import plugins
 
-    return validated(plugins.load(kind, name), options, "--option", {})
+    return validated(plugins.load(kind, name), options)
 
 
-def validated(model: type[BaseModel], options: Iterable[str], flag: str, values: Mapping[str, Any]) -> Any:
+def validated(
+    model: type[BaseModel],
+    options: Iterable[str] = (),
+    flag: str = "--option",
+    values: Mapping[str, Any] | None = None,
+) -> Any:
     """Return a model of the given values and options.
 
     Parameters
@@ -66,8 +71,8 @@ def validated(model: type[BaseModel], options: Iterable[str], flag: str, values:
         ``key=value`` each.
     flag : str
         Where the options were given, for messages.
-    values : mapping
-        Values that are given in another way.
+    values : mapping, optional
+        Values that were given by command-line options of their own, which messages name.
 
     Raises
     ------
@@ -80,20 +85,28 @@ def validated(model: type[BaseModel], options: Iterable[str], flag: str, values:
     >>> given = {"pattern": "regular-lines", "acceleration": 2.0}
     >>> validated(Sampling, ["partial_fourier=0.75"], "--constraint", given).partial_fourier
     0.75
+    >>> validated(Sampling, [], "--constraint", given | {"acceleration": 0.5})
+    Traceback (most recent call last):
+        ...
+    skipline.InputError: --acceleration: must be at least 1, not 0.5
     """
     from pydantic import ValidationError
 
-    from .study.explain import first_problem
+    from .explain import first_problem
 
-    given = dict(values)
+    given = dict(values or {})
+    own = set(given)
     for option in options:
         key, equals, text = option.partition("=")
         if not equals or not key.strip():
             raise InputError(f"{flag} {option}: expected key=value, such as weight=2")
         value = parse_value(text)
         given[key.strip()] = tuple(value) if isinstance(value, list) else value
+        own.discard(key.strip())
     try:
         return model.model_validate(given, strict=True)
     except ValidationError as error:
         keys, message = first_problem(error, model)
-        raise InputError(f"{flag} {'.'.join(map(str, keys))}: {message}") from None
+        name = ".".join(map(str, keys))
+        where = f"--{name.replace('_', '-')}" if name in own else f"{flag} {name}"
+        raise InputError(f"{where}: {message}") from None

@@ -29,6 +29,7 @@ from importlib.metadata import EntryPoint, entry_points
 from typing import Any
 
 from .. import InputError
+from .explain import nearest
 
 # modules are relative to the root of the package
 _BUILT_IN: dict[str, dict[str, str]] = {
@@ -59,6 +60,9 @@ _BUILT_IN: dict[str, dict[str, str]] = {
     },
 }
 
+KINDS = tuple(_BUILT_IN)
+"""What can be added."""
+
 # what the rest of skipline uses of each kind; a phantom needs no more than to be callable
 _NEEDED = {
     "patterns": ("name", "axes", "draw", "model_fields"),
@@ -86,7 +90,7 @@ def patterns() -> list[str]:
     >>> patterns()[:3]
     ['variable-density-lines', 'variable-density-points', 'regular-lines']
     """
-    return _names("patterns")
+    return names("patterns")
 
 
 def phantoms() -> list[str]:
@@ -97,7 +101,7 @@ def phantoms() -> list[str]:
     >>> phantoms()
     ['shepp-logan', 'shepp-logan-high-contrast', 'line-pair-slab']
     """
-    return _names("phantoms")
+    return names("phantoms")
 
 
 def methods() -> list[str]:
@@ -108,7 +112,7 @@ def methods() -> list[str]:
     >>> methods()
     ['zero-filled', 'wavelet-sparse']
     """
-    return _names("methods")
+    return names("methods")
 
 
 def measures() -> list[str]:
@@ -119,7 +123,7 @@ def measures() -> list[str]:
     >>> measures()
     ['nrmse', 'psnr', 'ssim', 'nrmse_overall', 'psnr_overall', 'ssim_overall']
     """
-    return _names("measures")
+    return names("measures")
 
 
 def load(kind: str, name: str) -> Any:
@@ -159,7 +163,7 @@ def load(kind: str, name: str) -> Any:
     if name in _BUILT_IN[kind]:
         module, _, attribute = _BUILT_IN[kind][name].partition(":")
         return getattr(import_module(f"..{module}", __package__), attribute)
-    raise InputError(f'there is no {kind[:-1]} "{name}"; {_nearest(name, _names(kind))}')
+    raise InputError(f'there is no {kind[:-1]} "{name}"{nearest(name, names(kind))}')
 
 
 def problems() -> list[str]:
@@ -170,10 +174,24 @@ def problems() -> list[str]:
     >>> problems()
     []
     """
-    return [reason for kind in _BUILT_IN for reason in _found(kind).refused.values()]
+    return [reason for kind in KINDS for reason in _found(kind).refused.values()]
 
 
-def _names(kind: str) -> list[str]:
+def names(kind: str) -> list[str]:
+    """Return the names of a kind, as `patterns` does.
+
+    Raises
+    ------
+    InputError
+        There is no such kind; the nearest one is given.
+
+    Examples
+    --------
+    >>> names("method")
+    Traceback (most recent call last):
+    ...
+    skipline.InputError: there is no kind "method"; did you mean "methods"?
+    """
     found = _found(kind)
     return [name for name in (*_BUILT_IN[kind], *sorted(found.objects)) if name not in found.refused]
 
@@ -181,8 +199,8 @@ def _names(kind: str) -> list[str]:
 @lru_cache
 def _found(kind: str) -> _Found:
     """Load what other packages add; once, so that the reasons are reported once."""
-    if kind not in _BUILT_IN:
-        raise InputError(f'there is no kind "{kind}"; {_nearest(kind, list(_BUILT_IN))}')
+    if kind not in KINDS:
+        raise InputError(f'there is no kind "{kind}"{nearest(kind, KINDS)}')
     claims: dict[str, list[EntryPoint]] = defaultdict(list)
     for point in entry_points(group=f"skipline.{kind}"):
         claims[point.name].append(point)
@@ -220,10 +238,3 @@ def _checked(kind: str, point: EntryPoint) -> Any:
 
 def _owner(point: EntryPoint) -> str:
     return point.dist.name if point.dist else point.value
-
-
-def _nearest(name: str, names: list[str]) -> str:
-    from difflib import get_close_matches
-
-    close = get_close_matches(name, names, n=1)
-    return f'did you mean "{close[0]}"?' if close else f"expected one of: {', '.join(names)}"

@@ -8,6 +8,7 @@ from typing import Protocol
 
 import numpy as np
 
+from .inner import norm
 from .sensing import Sensing
 from .wavelet_l1 import WaveletL1
 
@@ -45,7 +46,7 @@ class Problem:
         """
         step = self.sensing.descend(x, self.encoded, np.empty_like(x))
         self.penalty.prox(step, 1 / self.sensing.bound, step)
-        return relative(float(np.linalg.norm(x - step)), float(np.linalg.norm(x)))
+        return relative(norm(x - step), norm(x))
 
 
 def relative(part: float, whole: float) -> float:
@@ -127,6 +128,6 @@ def solve(
     >>> solution.converged, round(float(abs(solution.x[0, 0, 0])), 4)  # (8 - 0.8) / 8
     (True, 0.9)
     """
-    x = problem.start() if start is None else np.array(start, problem.sensing.dtype)
+    x = problem.start() if start is None else np.array(start, problem.sensing.dtype, order="C")
     x, converged, stopped, iterations, change = solver.minimise(problem, x, callback)
     return Solution(x, converged, stopped, iterations, change, problem.optimality(x), problem.objective(x))

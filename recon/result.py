@@ -26,7 +26,7 @@ class Reconstruction:
     sigma : float or None
         The noise's standard deviation that was used.
     sigma_source : str
-        Where sigma comes from: ``"given"``, ``"wavelet"`` (estimated), or ``"none"``.
+        Where sigma comes from: ``"given"``, ``"k-space border"`` (estimated), or ``"none"``.
     weight : float or None
         The regularisation weight, in units of sigma.
 

@@ -9,6 +9,7 @@ from numba import njit
 from .. import InputError
 from .acquired import fits
 from .fourier import to_image, to_kspace
+from .inner import inner
 from .precision import real_type
 from .team import Team
 
@@ -131,7 +132,7 @@ class Sensing:
         for coil in range(self.coils):
             k = x.copy() if self.maps is None else self.maps[coil] * x
             difference = self._fft(k) * self._sampled - encoded[coil]
-            total += float(np.linalg.norm(difference.ravel().astype(np.complex128)) ** 2)
+            total += inner(difference, difference)
         return total
 
     def backproject(self, encoded: np.ndarray) -> np.ndarray:
@@ -153,6 +154,8 @@ class Sensing:
 
     def normal(self, x: np.ndarray, out: np.ndarray) -> np.ndarray:
         """Write ``A^H A x`` to `out`, which may not be `x`."""
+        self._check(x)
+        self._check(out)
         if self.maps is None:
             np.copyto(out, x)
             k = self._fft(out)
@@ -167,6 +170,9 @@ class Sensing:
         """Write the gradient step ``z - A^H (A z - y) / bound`` to `out`, which may not be `z`."""
         if self.maps is None:
             return self.relax(z, encoded, 0.0, out)
+        for array in (z, out):
+            self._check(array)
+        self._check(encoded, encoded=True)
         self._round_trips(z, encoded)
         step = self._real(1 / self.bound)
         self._share(
@@ -185,6 +191,9 @@ class Sensing:
         In k-space this is ``(y + rho F w) / (1 + rho)`` where a sample was taken and ``F w`` elsewhere;
         ``rho = 0`` replaces the samples, which is also the gradient step of unit length.
         """
+        for array in (w, out):
+            self._check(array)
+        self._check(encoded, encoded=True)
         np.copyto(out, w)
         self._fft(out)
         taken = self._real(1 / (1 + rho))
@@ -200,9 +209,18 @@ class Sensing:
         return self._work.reshape(self.coils, -1)
 
     def _share(self, kernel, *args) -> None:
-        """Share a kernel over the elements of the image."""
+        """Share a kernel over the elements of the image, in whole blocks."""
         size = self._sampled.size
-        self.team.share(kernel, size, *args, elements=size)
+        self.team.share(kernel, size, *args, elements=size, grain=BLOCK)
+
+    def _check(self, x: np.ndarray, encoded: bool = False) -> np.ndarray:
+        """Refuse what the kernels, which see bare memory, must not get."""
+        shape = (self.coils, *self.shape) if encoded else self.shape
+        if x.shape != shape or x.dtype != self.dtype or not x.flags.c_contiguous:
+            raise InputError(
+                f"expected a C-contiguous {self.dtype} array of shape {shape}, got {x.dtype} of {x.shape}"
+            )
+        return x
 
     def _round_trips(self, x: np.ndarray, encoded: np.ndarray | None) -> None:
         """``F^H P (F S_c x - y_c)`` of every coil, each by one thread."""
@@ -266,7 +284,8 @@ def _multiply(x, s, out):
 
 
 BLOCK = 2048
-"""Elements that stay in the fastest cache while the coils are added."""
+"""Elements that stay in the fastest cache while the coils are added. Threads share whole blocks: a vector
+instruction and the scalar one for what is left over round differently, so none may begin inside a block."""
 
 
 @njit(nogil=True, cache=True, fastmath=_FAST)

@@ -39,16 +39,19 @@ class Team:
         self.threads = max(1, int(threads))
         self._pool = ThreadPoolExecutor(self.threads) if self.threads > 1 else None
 
-    def share(self, kernel: Callable[..., Any], lines: int, *args: Any, elements: int = 1 << 30) -> None:
+    def share(
+        self, kernel: Callable[..., Any], lines: int, *args: Any, elements: int = 1 << 30, grain: int = 1
+    ) -> None:
         """Call ``kernel(start, stop, *args)`` so that the parts cover ``range(lines)``.
 
-        `elements` says how much work there is in all; little work stays in the caller's thread.
+        `elements` says how much work there is in all; little work stays in the caller's thread. Parts begin
+        at multiples of `grain`.
         """
         parts = min(self.threads, lines, max(1, elements // SMALLEST_SHARE))
         if self._pool is None or parts == 1:
             kernel(0, lines, *args)
             return
-        edges = [lines * part // parts for part in range(parts + 1)]
+        edges = [min(lines, -(-lines * part // parts // grain) * grain) for part in range(parts)] + [lines]
         futures = [self._pool.submit(kernel, start, stop, *args) for start, stop in pairwise(edges)]
         for future in futures:
             future.result()

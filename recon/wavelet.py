@@ -6,11 +6,12 @@ from functools import cache
 
 import numpy as np
 
+from .. import InputError
 from . import filterbank
 from .precision import real_type
 from .team import Team
 from .wavelet_filters import analysis_filters
-from .wavelet_levels import check_levels
+from .wavelet_levels import axis_levels
 
 
 @cache
@@ -40,7 +41,8 @@ class WaveletTransform:
     wavelet : str
         Any orthogonal wavelet of PyWavelets.
     levels : int, optional
-        Number of levels; `default_levels` when not given. 0 is the identity.
+        Number of levels, of each axis as far as it can be halved; see `axis_levels` when not given. 0 is the
+        identity.
     axes : tuple of int
         The transformed axes.
     dtype : complex64, complex128, float32 or float64
@@ -50,7 +52,8 @@ class WaveletTransform:
     Raises
     ------
     InputError
-        Unknown or non-orthogonal wavelet, or more levels than the shortest axis can be halved.
+        Unknown or non-orthogonal wavelet, or more levels than the longest axis can be halved; an array of
+        another shape, type or memory order.
 
     Notes
     -----
@@ -83,36 +86,49 @@ class WaveletTransform:
         self.part = np.dtype(real_type(dtype))
         # Rows are taken apart sample by sample; a complex64 moves fastest as one 8-byte number.
         self._carrier = np.dtype(np.float64) if self.dtype == np.complex64 else self.dtype
-        self.levels = check_levels(levels, [shape[axis] for axis in self.axes])
+        of_axis = dict(zip(self.axes, axis_levels(levels, [shape[a] for a in self.axes]), strict=True))
+        self.levels = max(of_axis.values())
+        # the axes that each level halves, and the block that it works on
+        self._halved = [tuple(a for a in self.axes if of_axis[a] > level) for level in range(self.levels)]
         self._h, self._g, self._even, self._odd, self._shift = _padded_filters(wavelet, self.part)
         self.team = team or Team()
         self._boxes = [tuple(shape)]
-        for _ in range(self.levels):
+        for halved in self._halved:
             box = self._boxes[-1]
-            self._boxes.append(tuple((n + 1) // 2 if a in self.axes else n for a, n in enumerate(box)))
+            self._boxes.append(tuple((n + 1) // 2 if a in halved else n for a, n in enumerate(box)))
         self.coarsest = tuple(slice(n) for n in self._boxes[-1])
         self._scratch = np.empty(shape, self.dtype)
 
     def forward(self, x: np.ndarray, out: np.ndarray | None = None) -> np.ndarray:
         """Return the coefficients of `x`, written to `out` when given (which may be `x`)."""
-        out = np.empty_like(x) if out is None else out
+        self._check(x)
+        out = np.empty_like(x) if out is None else self._check(out)
         if self.levels == 0 and out is not x:
             np.copyto(out, x)
         source = x
-        for box in self._boxes[:-1]:
-            self._level(source, out, box, self.axes[::-1], forward=True)
+        for box, halved in zip(self._boxes, self._halved, strict=False):
+            self._level(source, out, box, halved[::-1], forward=True)
             source = out
         return out
 
     def inverse(self, c: np.ndarray, out: np.ndarray | None = None) -> np.ndarray:
         """Return the image with coefficients `c`, written to `out` when given (which may be `c`)."""
+        self._check(c)
         if out is None:
             out = c.copy()
         elif out is not c:
-            np.copyto(out, c)
-        for box in self._boxes[-2::-1]:
-            self._level(out, out, box, self.axes, forward=False)
+            np.copyto(self._check(out), c)
+        for box, halved in zip(self._boxes[-2::-1], self._halved[::-1], strict=True):
+            self._level(out, out, box, halved, forward=False)
         return out
+
+    def _check(self, x: np.ndarray) -> np.ndarray:
+        """Refuse what the kernels, which see bare memory, must not get."""
+        if x.shape != self.shape or x.dtype != self.dtype or not x.flags.c_contiguous:
+            raise InputError(
+                f"expected a C-contiguous {self.dtype} array of {self.shape}, got {x.dtype} of {x.shape}"
+            )
+        return x
 
     def _level(
         self, src: np.ndarray, dst: np.ndarray, box: tuple[int, ...], axes: tuple[int, ...], *, forward: bool

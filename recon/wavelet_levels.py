@@ -1,4 +1,4 @@
-"""How many levels a wavelet transform has."""
+"""How many levels a wavelet transform has, along each axis."""
 
 from __future__ import annotations
 
@@ -7,45 +7,54 @@ from collections.abc import Sequence
 from .. import InputError
 
 COARSEST_SAMPLES = 8
-"""By default an axis is halved as long as at least this many samples remain."""
+"""By default an axis is halved as long as this many samples remain, and once where that can be done."""
 
 
-def default_levels(lengths: Sequence[int]) -> int:
-    """Return the number of levels that leaves at least `COARSEST_SAMPLES` samples on the shortest axis.
+def axis_levels(levels: int | None, lengths: Sequence[int]) -> tuple[int, ...]:
+    """Return how often each axis is halved.
 
-    Examples
-    --------
-    >>> default_levels([256, 256]), default_levels([181, 217, 181]), default_levels([12])
-    (5, 4, 0)
-    """
-    shortest, levels = min(lengths), 0
-    while (shortest := (shortest + 1) // 2) >= COARSEST_SAMPLES:
-        levels += 1
-    return levels
+    Every axis has its own number of levels, so that a volume of few slices has still all of its levels in the
+    plane.
 
-
-def check_levels(levels: int | None, lengths: Sequence[int]) -> int:
-    """Return the number of levels for axes of the given lengths; the default when `levels` is None.
+    Parameters
+    ----------
+    levels : int or None
+        As many as that, but no more than an axis allows; None for the default, see `COARSEST_SAMPLES`.
+    lengths : sequence of int
 
     Raises
     ------
     InputError
-        The shortest axis cannot be halved so often.
+        No axis can be halved so often.
 
     Examples
     --------
-    >>> check_levels(5, [16, 64])
+    >>> axis_levels(None, [256, 192, 12, 1]), axis_levels(3, [64, 6])
+    ((5, 4, 1, 0), (3, 3))
+    >>> axis_levels(9, [16, 64])
     Traceback (most recent call last):
         ...
-    skipline.InputError: 5 wavelet levels asked for, but the shortest axis has 16 samples: at most 4
+    skipline.InputError: 9 wavelet levels asked for, but the longest axis has 64 samples: at most 6
     """
     if levels is None:
-        return default_levels(lengths)
-    shortest = min(lengths)
-    possible = (shortest - 1).bit_length()
-    if levels > possible:
+        return tuple(_default(n) for n in lengths)
+    longest = max(lengths)
+    if levels > _possible(longest):
         raise InputError(
-            f"{levels} wavelet levels asked for, but the shortest axis has {shortest} samples: "
-            f"at most {possible}"
+            f"{levels} wavelet levels asked for, but the longest axis has {longest} samples: "
+            f"at most {_possible(longest)}"
         )
+    return tuple(min(levels, _possible(n)) for n in lengths)
+
+
+def _possible(n: int) -> int:
+    return (n - 1).bit_length()
+
+
+def _default(n: int) -> int:
+    levels = 0
+    while (n := (n + 1) // 2) >= (COARSEST_SAMPLES if levels else 2):
+        levels += 1
+        if n < COARSEST_SAMPLES:
+            break
     return levels

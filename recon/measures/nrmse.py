@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from ..inner import norm
 from .magnitudes import magnitudes
 from .measure import Measure
 
@@ -36,7 +37,7 @@ def nrmse(reference: np.ndarray, image: np.ndarray, region: np.ndarray | None = 
     0.25
     """
     r, x, inside = magnitudes(reference, image, region)
-    return float(np.linalg.norm(x[inside] - r[inside]) / np.linalg.norm(r[inside]))
+    return norm(x[inside] - r[inside]) / norm(r[inside])
 
 
 def _overall(reference: np.ndarray, image: np.ndarray, support: np.ndarray) -> float:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING, ClassVar, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator
@@ -21,8 +22,9 @@ class WaveletSparse(BaseModel):
 
     ``A`` is the Fourier sensing operator with the coil maps, ``W`` an orthonormal periodised wavelet
     transform, in each slice or in the volume. Sigma is the noise's standard deviation: the one given with
-    the data, otherwise estimated from the k-space border. A stack whose slices are not coupled by the
-    sampling is solved slice by slice, each to its own convergence.
+    the data, otherwise estimated from the k-space border. With several coils the image is penalised as they
+    see it, on the scale on which the mean of ``sum_c |S_c|^2`` is 1. A stack whose slices are not coupled by
+    the sampling is solved slice by slice, each to its own convergence.
 
     Source: Lustig, Donoho & Pauly, Magn. Reson. Med. 58 (2007) 1182.
 
@@ -49,7 +51,9 @@ class WaveletSparse(BaseModel):
         default="db4", description="any orthogonal wavelet of PyWavelets, such as haar, db4, sym8, coif3"
     )
     levels: int | None = Field(
-        default=None, ge=0, description="wavelet levels; by default down to 8 to 16 samples an axis"
+        default=None,
+        ge=0,
+        description="wavelet levels; by default each axis is halved down to 8 to 15 samples",
     )
     weight: float = Field(
         default=1.0,
@@ -83,9 +87,9 @@ class WaveletSparse(BaseModel):
 
     def check(self, shape: tuple[int, int, int]) -> None:
         """Refuse, before any work, an image that the options do not fit."""
-        from ..wavelet_levels import check_levels
+        from ..wavelet_levels import axis_levels
 
-        check_levels(self.levels, shape if self.wavelet_axes == "xyz" and shape[2] > 1 else shape[:2])
+        axis_levels(self.levels, shape[:2])
 
     def reconstruct(self, data: Acquired, threads: int = 1) -> Reconstruction:
         """Return the image of the acquired data."""
@@ -99,6 +103,7 @@ class WaveletSparse(BaseModel):
         largest = float(np.max(np.abs(data.kspace)))
         scale = 2.0 ** np.round(np.log2(largest)) if largest > 0 else 1.0
         threshold = self.weight * sigma / scale
+        data, sensitivity = _with_unit_maps(data)
         coupled = data.shape[2] > 1 and (data.mask.shape[2] > 1 or self.wavelet_axes == "xyz")
         solve_blocks = self._solve_volume if coupled else self._solve_slices
         image, solutions = solve_blocks(data, data.kspace / data.dtype.type(scale), threshold, threads)
@@ -107,7 +112,7 @@ class WaveletSparse(BaseModel):
         if limits and len(solutions) > 1:
             stopped += f" in {len(limits)} of {len(solutions)} slices"
         return Reconstruction(
-            image=image * real_type(image.dtype)(scale),
+            image=image * real_type(image.dtype)(scale / sensitivity),
             converged=not limits,
             stopped=stopped,
             iterations=max(s.iterations for s in solutions),
@@ -176,3 +181,20 @@ class WaveletSparse(BaseModel):
         solver = {"fista": Fista, "admm": Admm}[self.solver]
         problem = Problem(sensing, sensing.encode(kspace), penalty)
         return solve(problem, solver(self.iterations, self.tolerance))
+
+
+def _with_unit_maps(data: Acquired) -> tuple[Acquired, float]:
+    """Return the data with coil maps of unit power, and the factor by which they were divided.
+
+    The unit is the root of the mean of ``sum_c |S_c|^2`` where any coil sees: so the weight means the same
+    whatever the scale of the maps.
+    """
+    import numpy as np
+
+    if data.maps is None:
+        return data, 1.0
+    largest = float(np.max(np.abs(data.maps)))
+    maps = data.maps / data.maps.dtype.type(largest)
+    power = np.sum(np.abs(maps) ** 2, axis=0)
+    unit = float(np.sqrt(np.mean(power[power > 0], dtype=np.float64)))
+    return replace(data, maps=maps / maps.dtype.type(unit)), largest * unit

@@ -117,7 +117,7 @@ def _sampling(case: Finished) -> Mapping[str, Any]:
 
 
 def _lengths(case: Finished) -> Mapping[str, Any]:
-    return {name: case.settings.get(name) for name in ("reference", "matrix", "slices")}
+    return {name: case.settings.get(name) for name in ("reference", "matrix", "slices", "encoded_axes")}
 
 
 def _plane(encoded: str) -> tuple[str, str]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Mapping
+from collections.abc import Mapping, Set
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -79,36 +79,46 @@ class Case:
         An option whose name is taken has its owner's before it: ``method_iterations`` is the limit that a
         method was given, ``iterations`` what it took.
         """
-        reference = self.reference
-        settings: dict[str, Any] = {"reference": Path(reference.source).name}
-        settings |= _plain(reference, "matrix", "field_of_view_mm", "slices")
-        settings |= _plain(self.acquisition, "coils", "snr")
-        if self.acquisition.maps:
-            settings["maps"] = Path(self.acquisition.maps).name
-        settings |= _plain(self.sampling, "pattern", "phase_encode", *CONSTRAINTS)
-        _add(settings, "pattern", self.pattern)
-        settings |= _plain(self.sampling, "acceleration")
-        settings |= {"draw": self.draw, "noise_draw": self.noise_draw, "method": self.method_name}
-        _add(settings, "method", self.method)
-        return settings
+        sampling, draws = self._sampling, self._draws
+        taken = {*self.condition, *sampling, *draws, *RESULTS}
+        pattern = _named("pattern", self.pattern, taken)
+        method = _named("method", self.method, taken | pattern.keys())
+        return self.condition | sampling | pattern | draws | method
 
-    @property
-    def method_settings(self) -> dict[str, Any]:
-        """The reconstruction's part of the settings."""
-        names = list(self.settings)
-        return {name: self.settings[name] for name in names[names.index("method") :]}
-
-    @property
+    @cached_property
     def condition(self) -> dict[str, Any]:
         """The settings of the object and its acquisition, as far as they are no choice of sampling."""
-        names = list(self.settings)
-        return {name: self.settings[name] for name in names[: names.index("pattern")]}
+        condition: dict[str, Any] = {"reference": Path(self.reference.source).name}
+        condition |= _plain(self.reference, "matrix", "field_of_view_mm", "slices")
+        if self.reference.encoded_axes:
+            condition["encoded_axes"] = self.reference.encoded_axes
+        condition |= _plain(self.acquisition, "coils", "snr")
+        if self.acquisition.maps:
+            condition["maps"] = Path(self.acquisition.maps).name
+        return condition
+
+    @property
+    def _sampling(self) -> dict[str, Any]:
+        return _plain(self.sampling, "pattern", "phase_encode", *CONSTRAINTS)
+
+    @property
+    def _draws(self) -> dict[str, Any]:
+        draws = {"draw": self.draw, "noise_draw": self.noise_draw, "method": self.method_name}
+        return _plain(self.sampling, "acceleration") | draws
 
     @cached_property
     def id(self) -> str:
         """First 12 hexadecimal digits of the SHA-256 of all that determines the result."""
-        settings = self.settings | ({"law": self.law_digest} if self.law_digest else {})
-        return _hash({"seed": self.seed, **self._content(settings)})
+        pattern = self.pattern.model_dump(mode="json")
+        return _hash(
+            {
+                "seed": self.seed,
+                **self._content(self.condition | self._sampling | self._draws),
+                # under keys of their own: a plug-in's option may have any name
+                "pattern": pattern | ({"law": self.law_digest} if self.law_digest else {}),
+                "method": self.method.model_dump(mode="json"),
+            }
+        )
 
     @cached_property
     def reference_id(self) -> str:
@@ -152,9 +162,15 @@ def _plain(table: BaseModel, *names: str) -> dict[str, Any]:
     return {name: list(value) if isinstance(value, tuple) else value for name, value in values}
 
 
-def _add(settings: dict[str, Any], owner: str, options: BaseModel) -> None:
-    for name, value in options.model_dump(mode="json").items():
-        settings[f"{owner}_{name}" if name in settings or name in RESULTS else name] = value
+def _named(owner: str, options: BaseModel, taken: Set[str]) -> dict[str, Any]:
+    """Return options by the names that tables have for them."""
+    values = options.model_dump(mode="json")
+    named: dict[str, Any] = {}
+    for name, value in values.items():
+        while name in taken or name in named:
+            name = f"{owner}_{name}"
+        named[name] = value
+    return named
 
 
 def _hash(content: Mapping[str, Any]) -> str:

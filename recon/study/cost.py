@@ -99,7 +99,7 @@ def estimate(study: Study, workers: int | None = None) -> Estimate:
     """
     cases = study.cases()
     workers = max(1, min(workers or cores(), len(cases)))
-    points = {case.reference: math.prod(references.shape(case.reference)) for case in cases}
+    points = {one: math.prod(references.shape(one)) for one in {case.reference for case in cases}}
     seconds = [_case_seconds(case, points[case.reference]) for case in cases]
     memory = max(map(_process_bytes, cases, (points[case.reference] for case in cases)), default=0.0)
     disk = sum(CASE_BYTES + POINT_BYTES * points[case.reference] for case in cases)

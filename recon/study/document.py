@@ -195,7 +195,7 @@ def _override(values: dict[str, Any], overrides: Iterable[str]) -> tuple[dict[st
         name = name.strip()
         if not equals or not name or any(not part for part in name.split(".")):
             raise InputError(f"--set {override}: expected key=value, for example sampling.acceleration=4")
-        keys: Keys = tuple(int(part) if part.isdigit() else part for part in name.split("."))
+        keys: Keys = tuple(int(part) if part.isdecimal() else part for part in name.split("."))
         value = parse_value(text)
         if keys in PATHS:
             value = _absolute(value, Path.cwd(), PATHS[keys])

@@ -15,6 +15,7 @@ from ... import CAUTION, __version__
 from .. import plugins
 from .cases import Case
 from .encoding import on_kspace, phase_encode_grid
+from .machine import machine
 from .references import Prepared, prepare
 from .seeds import generator
 
@@ -31,7 +32,7 @@ class Evaluated:
     mask : bool array (x, y, z)
         The sampled points of k-space.
     record : dict
-        Settings, measures, convergence, seconds, versions: what `case.json` says.
+        Settings, measures, convergence, seconds, versions, machine: what `case.json` says.
     """
 
     image: np.ndarray
@@ -96,6 +97,7 @@ def evaluate(case: Case, threads: int = 1) -> Evaluated:
         },
         "seconds": round(time.perf_counter() - begin, 3),
         "versions": versions(),
+        "machine": machine(),
         "caution": CAUTION,
     }
     return Evaluated(result.image, error, np.broadcast_to(mask, result.image.shape), record)
@@ -105,7 +107,7 @@ def prepared_for(case: Case) -> Prepared:
     """Return the reference that a case is compared with."""
     coils = case.acquisition.coils
     assert coils is not None  # the plan fills it in
-    return prepare(case.reference, coils, case.acquisition.maps)
+    return prepare(case.reference, coils, case.acquisition.maps, case.digests)
 
 
 def draw_mask(case: Case, prepared: Prepared) -> np.ndarray:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import platform
 from collections.abc import Iterator
 from contextlib import contextmanager
 
@@ -20,6 +21,18 @@ def cores() -> int:
     if hasattr(os, "sched_getaffinity"):
         return len(os.sched_getaffinity(0))
     return os.cpu_count() or 1
+
+
+def machine() -> str:
+    """Return what a result was computed on.
+
+    Examples
+    --------
+    >>> machine().endswith((" core", " cores"))
+    True
+    """
+    number = cores()
+    return f"{platform.system()} {platform.machine()}, {number} core{'s' if number > 1 else ''}"
 
 
 @contextmanager

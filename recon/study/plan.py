@@ -12,11 +12,11 @@ from pydantic import BaseModel, ValidationError
 
 from ... import InputError
 from .. import plugins
+from ..explain import first_problem, nearest, shown
 from . import references
 from .cases import Case
 from .document import LAW_FILES, Document, Keys, read_document
-from .encoding import CONSTRAINTS, phase_encode_axes, phase_encode_grid
-from .explain import first_problem, nearest, shown
+from .encoding import CONSTRAINTS, Shape, phase_encode_axes, phase_encode_grid
 from .settings import About, Acquisition, Limit, Reference, Sampling
 from .sweep import combinations
 
@@ -32,7 +32,8 @@ class Setting:
     reference: Reference
     acquisition: Acquisition
     samplings: tuple[tuple[Sampling, BaseModel, str], ...]
-    digests: tuple[tuple[str, str], ...]
+    digests: references.Digests
+    shape: Shape
 
 
 @dataclass(frozen=True)
@@ -154,7 +155,7 @@ def load_study(path: str | Path, overrides: Iterable[str] = ()) -> Study:
     for setting, (i, _, _, options) in product(settings, methods):
         check = getattr(options, "check", None)
         if check is not None:
-            _placed(document, ("reconstruction", i), check, references.shape(setting.reference))
+            _placed(document, ("reconstruction", i), check, setting.shape)
     named_methods = tuple((name, options) for _, name, _, options in methods)
     return Study(about, settings, named_methods, limits, document)
 
@@ -277,15 +278,25 @@ def _setting(
     where = ("acquisition", "maps" if acquisition.maps else "coils")
     shape = _placed(document, source, references.shape, reference)
     coils = _placed(document, where, references.coil_count, reference, acquisition)
-    files = {key: getattr(reference, key) for key in ("image", "phase", "kspace")} | {
-        "maps": acquisition.maps
-    }
-    digests = tuple((key, references.digest(path)) for key, path in files.items() if path)
+    _check_window(document, source, shape)
+    digests = _placed(document, source, references.digests, reference, acquisition.maps)
     fitted = tuple(
         (_fit(document, sampling, pattern, shape), pattern, _law_digest(document, pattern))
         for _, sampling, pattern in samplings
     )
-    return Setting(reference, acquisition.model_copy(update={"coils": coils}), fitted, digests)
+    return Setting(reference, acquisition.model_copy(update={"coils": coils}), fitted, digests, shape)
+
+
+def _check_window(document: Document, source: Keys, shape: Shape) -> None:
+    """Refuse slices that are smaller than the window of the similarity, which every case is measured with."""
+    if "ssim" not in plugins.measures():
+        return
+    from ..measures.ssim import WINDOW
+
+    if min(shape[:2]) < WINDOW:
+        raise document.refusal(
+            source, f"slices are {shape[0]} x {shape[1]}; similarity needs at least {WINDOW} x {WINDOW}"
+        )
 
 
 def _law_digest(document: Document, pattern: Any) -> str:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 from dataclasses import dataclass
 from functools import lru_cache
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -19,6 +20,9 @@ if TYPE_CHECKING:
 
 SLICE_THICKNESS_MM = 5.0
 """Thickness that files state for the slice of a 2-D phantom, which has none."""
+
+Digests = tuple[tuple[str, str], ...]
+"""The files of a reference by what they are, and the SHA-256 of the content of each."""
 
 MATRIX = (256, 256)
 """Matrix of a phantom when the study file gives none."""
@@ -72,18 +76,24 @@ class Prepared:
 
 
 def complete(reference: Reference) -> Reference:
-    """Fill in a phantom's matrix and field of view.
+    """Fill in a phantom's matrix and field of view, and the encoded axes that k-space's sidecar tells.
 
     Raises
     ------
     InputError
-        There is no such phantom.
+        There is no such phantom; the sidecar cannot be read.
 
     Examples
     --------
     >>> complete(Reference(phantom="line-pair-slab")).matrix
     (256, 256)
     """
+    if reference.kspace is not None and reference.encoded_axes is None:
+        from ..files import read_sidecar
+
+        axes = read_sidecar(reference.kspace).get("EncodedAxes", "xyz")
+        # whatever else it says is refused when k-space is read
+        return reference.model_copy(update={"encoded_axes": axes}) if isinstance(axes, str) else reference
     if reference.phantom is None:
         return reference
     field_of_view = reference.field_of_view_mm or tuple(
@@ -161,8 +171,9 @@ def coil_count(reference: Reference, acquisition: Acquisition) -> int:
     return maps.shape[0]
 
 
-@lru_cache(maxsize=2)
-def prepare(reference: Reference, coils: int, maps_file: str | None) -> Prepared:
+def prepare(
+    reference: Reference, coils: int, maps_file: str | None, contents: Digests | None = None
+) -> Prepared:
     """Prepare a complete reference; the last two are kept in memory.
 
     A phantom's k-space comes from its closed form, coils of the simulated array included; a volume's, and a
@@ -176,6 +187,13 @@ def prepare(reference: Reference, coils: int, maps_file: str | None) -> Prepared
         Number of coils, as `coil_count` says.
     maps_file : str or None
         NIfTI volume of given coil maps.
+    contents : tuple of (str, str), optional
+        What `digests` said of the files when the study was read; what it says now when not given.
+
+    Raises
+    ------
+    InputError
+        A file is no longer what it was, or cannot be used.
 
     Examples
     --------
@@ -183,9 +201,20 @@ def prepare(reference: Reference, coils: int, maps_file: str | None) -> Prepared
     >>> prepare(small, 1, None).kspace.shape
     (1, 32, 32, 1)
     """
+    return _prepare(
+        reference, coils, maps_file, digests(reference, maps_file) if contents is None else contents
+    )
+
+
+@lru_cache(maxsize=2)
+def _prepare(reference: Reference, coils: int, maps_file: str | None, contents: Digests) -> Prepared:
     from ...phantoms.acquisition import support
     from ..fourier import to_image, to_kspace
 
+    if digests(reference, maps_file) != contents:
+        raise InputError(
+            f"the files of {reference.source} have changed since the study was read; run it again"
+        )
     maps: np.ndarray | None = None
     array: Any = None
     if maps_file is not None:
@@ -218,6 +247,25 @@ def prepare(reference: Reference, coils: int, maps_file: str | None) -> Prepared
     return Prepared(np.ascontiguousarray(kspace), maps, image, support(image), affine, like)
 
 
+def digests(reference: Reference, maps_file: str | None = None) -> Digests:
+    """Return the digests of the files that there are of a reference: sidecars tell how a volume is read.
+
+    Examples
+    --------
+    >>> digests(Reference(phantom="line-pair-slab"))
+    ()
+    """
+    from ..files import sidecar_path
+
+    files: dict[str, Path] = {}
+    for key in ("image", "phase", "kspace"):
+        if path := getattr(reference, key):
+            files |= {key: Path(path), f"{key} sidecar": sidecar_path(path)}
+    if maps_file is not None:
+        files["maps"] = Path(maps_file)
+    return tuple((key, digest(str(path))) for key, path in files.items() if path.is_file())
+
+
 def digest(path: str) -> str:
     """Return the SHA-256 of a file's content.
 
@@ -233,7 +281,6 @@ def digest(path: str) -> str:
         raise InputError(f"{path} cannot be read ({error.strerror})") from None
 
 
-@lru_cache(maxsize=2)
 def given_maps(path: str) -> np.ndarray:
     """Read coil maps, complex64 (coil, x, y, z).
 
@@ -242,6 +289,14 @@ def given_maps(path: str) -> np.ndarray:
     InputError
         The file is not a NIfTI volume of coil maps.
     """
+    return _read_maps(path, digest(path) if Path(path).is_file() else "")
+
+
+# What is kept in memory goes by content: a file that is overwritten is another.
+
+
+@lru_cache(maxsize=2)
+def _read_maps(path: str, content: str) -> np.ndarray:
     from ..files import read_volume
 
     data = np.asarray(read_volume(path).data, np.complex64)
@@ -259,8 +314,12 @@ def _ring_array(reference: Reference, coils: int) -> tuple[Any, np.ndarray]:
     return array, array.maps(shape(reference))
 
 
-@lru_cache(maxsize=2)
 def _source(reference: Reference) -> Volume:
+    return _read_source(reference, digests(reference))
+
+
+@lru_cache(maxsize=2)
+def _read_source(reference: Reference, contents: Digests) -> Volume:
     from ..files import read_volume
     from ..kspace_file import read_kspace
 

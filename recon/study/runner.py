@@ -7,8 +7,10 @@ import os
 import signal
 import threading
 import time
+from collections import deque
 from collections.abc import Callable, Generator, Iterator
-from concurrent.futures import Future, ProcessPoolExecutor, as_completed
+from concurrent.futures import FIRST_COMPLETED, Future, ProcessPoolExecutor, wait
+from concurrent.futures.process import BrokenProcessPool
 from contextlib import closing, contextmanager
 from dataclasses import dataclass
 from multiprocessing.process import BaseProcess
@@ -176,26 +178,74 @@ def _finished(todo: list[Case], folder: Path, workers: int) -> Generator[tuple[C
 
 
 def _in_processes(todo: list[Case], folder: Path, workers: int) -> Iterator[tuple[Case, str]]:
+    waiting = deque(todo)
+    try:
+        while waiting:
+            suspects = deque((yield from _in_pool(waiting, folder, workers)))
+            while suspects:
+                # one after the other, so that a second death is the doing of the case itself
+                for case in (yield from _in_pool(suspects, folder, 1)):
+                    yield case, "the worker process ended (killed, or out of memory)"
+    finally:
+        for case in todo:
+            # what a worker that was killed has left
+            if not results.is_finished(folder, case):
+                results.discard_case(folder, case)
+
+
+def _in_pool(
+    waiting: deque[Case], folder: Path, workers: int
+) -> Generator[tuple[Case, str], None, list[Case]]:
+    """Take cases from `waiting` and yield each as it ends.
+
+    A worker process that is killed takes its pool with it: those that were in flight are returned then, and
+    the rest is still waiting.
+    """
     threads = max(1, cores() // workers)
     others = set(multiprocessing.active_children())
     context = multiprocessing.get_context("spawn")
+    running: dict[Future[str], Case] = {}
+    lost: list[Case] = []
+    whole = False
     with threads_of_children(threads):
         executor = ProcessPoolExecutor(workers, mp_context=context, initializer=_start_worker)
         try:
-            futures = {executor.submit(_work, case, folder, threads): case for case in todo}
-            for future in as_completed(futures):
-                yield futures[future], _message(future)
-        except BaseException:
-            # Ctrl-C, or the caller went away: whoever runs a case cleans up after it, then all end.
-            executor.shutdown(wait=False, cancel_futures=True)
-            _end(set(multiprocessing.active_children()) - others)
-            raise
+            while running or (waiting and not lost):
+                # no more than there are workers: those submitted are those in flight
+                while waiting and not lost and len(running) < workers:
+                    with _interrupts_held():
+                        running[executor.submit(_work, waiting[0], folder, threads)] = waiting[0]
+                    waiting.popleft()
+                for future in wait(running, return_when=FIRST_COMPLETED).done:
+                    case = running.pop(future)
+                    if isinstance(future.exception(), BrokenProcessPool):
+                        lost.append(case)
+                    else:
+                        yield case, _message(future)
+            whole = not lost
+        except BrokenProcessPool:
+            # found when a case was to be submitted
+            lost += running.values()
         finally:
+            # Ctrl-C, a death, or the caller went away: whoever runs a case cleans up after it, then all end.
+            if not whole:
+                executor.shutdown(wait=False, cancel_futures=True)
+                _end(set(multiprocessing.active_children()) - others)
             executor.shutdown()
-            for case in todo:
-                # what a worker that was killed has left
-                if not results.is_finished(folder, case):
-                    results.discard_case(folder, case)
+    return lost
+
+
+@contextmanager
+def _interrupts_held() -> Iterator[None]:
+    """Let processes that start meanwhile hold Ctrl-C, which reaches all of them, until they ignore it."""
+    if not hasattr(signal, "pthread_sigmask"):
+        yield
+        return
+    usual = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, usual)
 
 
 def _end(workers: set[BaseProcess]) -> None:
@@ -213,15 +263,14 @@ def _message(future: Future[str]) -> str:
     try:
         return future.result()
     except Exception as error:
-        # The worker process itself is gone (killed, or out of memory), or could not send its answer.
-        return f"the worker process ended: {' '.join(str(error).split())}"
+        # the answer could not be sent
+        return f"{type(error).__name__}: {' '.join(str(error).split())}"
 
 
 class _Stopped(BaseException):
     """The parent process asks for an end."""
 
 
-_stopping = threading.Event()
 _working = threading.Event()
 
 
@@ -236,17 +285,18 @@ def _start_worker() -> None:
 
 def _stop(signum: int, frame: Any) -> None:
     signal.signal(signal.SIGTERM, signal.SIG_IGN)
-    _stopping.set()
     if _working.is_set():
         raise _Stopped
+    os._exit(1)
 
 
 def _work(case: Case, folder: Path, threads: int) -> str:
-    if _stopping.is_set():
-        raise _Stopped
     _working.set()
     try:
         return run_case(case, folder, threads)
+    except _Stopped:
+        # at once: the queues of a pool that lost a worker may be locked for ever
+        os._exit(1)
     finally:
         _working.clear()
 

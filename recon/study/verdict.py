@@ -4,6 +4,9 @@ Each choice of sampling and reconstruction has a curve of measures against the a
 passes when the mean over the draws of every limited measure is within its limit, no case of it failed, and
 every lower acceleration passes too. Where a study has several objects or acquisitions (noise levels, coils),
 a choice has to pass in all of them: they are conditions, not choices.
+
+While any case failed nothing is decided: it might have passed, or have made another choice the best. The
+sentence says so first, and the acceleration is None, so that no program takes what is left for a verdict.
 """
 
 from __future__ import annotations
@@ -128,8 +131,9 @@ def decide(
     Returns
     -------
     dict
-        ``acceleration`` (None when nothing passes, or there is no limit), ``sentence``, ``choice``,
-        ``first_failure``, ``curves``, ``warnings``, ``not_converged``, ``failed``, ``limits``, ``caution``.
+        ``acceleration`` (None when nothing passes, a case failed, or there is no limit), ``sentence``,
+        ``choice``, ``first_failure``, ``curves``, ``warnings``, ``not_converged``, ``failed``, ``limits``,
+        ``cases``, ``caution``.
     """
     curves = [_curve(group, limits, measures) for group in grouped(rows, _curve_key)]
     condition_names = _varying([curve.condition for curve in curves])
@@ -141,8 +145,8 @@ def decide(
     failed = [row for row in rows if row.record is None]
     return {
         "study": title,
-        "acceleration": weakest.acceleration if weakest else None,
-        "sentence": _sentence(weakest, label, condition, limits),
+        "acceleration": weakest.acceleration if weakest and not failed else None,
+        "sentence": _undecided(len(failed), len(rows), _sentence(weakest, label, condition, limits)),
         "label": label,
         "choice": dict(best[0].choice) if best and weakest and weakest.acceleration else None,
         "first_failure": weakest.first_failure(limits) if weakest else None,
@@ -226,6 +230,14 @@ def _sentence(weakest: Curve | None, label: str, condition: str, limits: Mapping
         f"with {label}; "
         f"at R = {text(failure['acceleration'])}{where} {_breaks(failure)}."
     )
+
+
+def _undecided(failed: int, cases: int, sentence: str) -> str:
+    """Say first that cases failed, where any did."""
+    if not failed:
+        return sentence
+    rest = sentence if sentence.startswith("R = ") else sentence[0].lower() + sentence[1:]
+    return f"Not decided: {failed} of {cases} cases failed; {rest}"
 
 
 def _breaks(failure: Mapping[str, Any]) -> str:

@@ -14,7 +14,8 @@ from skipline.masks.poisson_disc import PoissonDisc
 def radial_spectrum(masks: list[np.ndarray], edges: np.ndarray) -> np.ndarray:
     """Radially averaged power spectrum of masks, 1 for white noise.
 
-    Source: Ulichney, Proc. IEEE 76 (1988) 56: the mean over annuli of the power without its mean, divided by
+    Source, from memory: Ulichney, Proc. IEEE 76 (1988) 56: the mean over annuli of the power without its
+    mean, divided by
     the variance g (1 - g) of a binary pattern of density g.
     """
     first, second = (np.fft.fftfreq(n) for n in masks[0].shape)
@@ -25,7 +26,8 @@ def radial_spectrum(masks: list[np.ndarray], edges: np.ndarray) -> np.ndarray:
 
 @pytest.mark.parametrize("acceleration", [6, 8, 12])
 def test_blue_noise_hole_below_the_principal_frequency(acceleration: float) -> None:
-    # Source: Ulichney (1988). Blue noise has hardly any power below the principal frequency, which is the
+    # Source, from memory: Ulichney (1988). Blue noise has hardly any power below the principal frequency,
+    # which is the
     # square root of the density g in cycles per point, a peak there, and is flat above. White noise is flat.
     grid, rng = Grid((128, 128)), np.random.default_rng(40)
     principal = (1 / acceleration) ** 0.5
@@ -57,7 +59,8 @@ def test_the_hole_is_an_ellipse_in_the_metric_of_the_grid() -> None:
 
 
 def test_sidelobes_near_the_peak_are_lower_than_those_of_a_random_draw_of_the_same_density() -> None:
-    # Source: Ulichney (1988), for the hole; by Parseval all masks have the same energy of sidelobes, so what
+    # Source, from memory: Ulichney (1988), for the hole; by Parseval all masks have the same energy of
+    # sidelobes, so what
     # is missing near the peak is found farther out. The density of the random draws is the mean of
     # Poisson-disc masks.
     grid, acceleration, rng = Grid((96, 80), 12), 6, np.random.default_rng(42)

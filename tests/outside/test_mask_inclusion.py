@@ -23,7 +23,8 @@ POINTS = (VariableDensityPoints, Grid((20, 16), 4), 4)
 def p_value(counts: np.ndarray, draws: int, probabilities: np.ndarray) -> float:
     """Chi-square test that points were taken with these probabilities, in draws of fixed size.
 
-    Source: Hajek, Ann. Math. Stat. 35 (1964) 1491. In a design of fixed size and high entropy the number of
+    Source, from memory: Hajek, Ann. Math. Stat. 35 (1964) 1491. In a design of fixed size and high entropy
+    the number of
     times that a point is taken has the variance p (1 - p) a draw, smaller than the p of Pearson's test, and
     the covariances are c_i [i = j] - c_i c_j / sum c, with c - c^2 / sum c = p (1 - p). Then
     sum (counts - draws p)^2 / (draws c) has the chi-square distribution, with one degree of freedom less
@@ -60,7 +61,8 @@ def sequential_draw(probabilities: np.ndarray, rng: np.random.Generator) -> np.n
 def hotelling(draws: np.ndarray, probabilities: np.ndarray) -> float:
     """Chi-square test that the mean of draws is the probabilities, whatever the covariances are.
 
-    Source: Hotelling, Ann. Math. Stat. 2 (1931) 360: T^2 = n d' S^-1 d for the mean deviation d and the
+    Source, from memory: Hotelling, Ann. Math. Stat. 2 (1931) 360: T^2 = n d' S^-1 d for the mean deviation d
+    and the
     sample covariance S, and (n - k) / (k (n - 1)) T^2 has the F distribution. S has no inverse, as the size
     of the sample is fixed; what is constant must be right exactly, and the test is on the rest.
     """
@@ -162,7 +164,8 @@ def test_inclusion_frequencies_with_constraints_and_spread(
 @pytest.mark.parametrize("law", UNEQUAL)
 @DESIGNS
 def test_sequential_drawing_fails_the_same_check(design, law: str, laws) -> None:
-    # Source: Tille, Sampling Algorithms (2006): successive drawing does not keep the inclusion probabilities.
+    # Source, from memory: Tille, Sampling Algorithms (2006): successive drawing does not keep the inclusion
+    # probabilities.
     pattern_class, grid, acceleration = design
     density = pattern_class(**laws(grid)[law]).density(grid, acceleration)
     rng = np.random.default_rng(21)
@@ -181,7 +184,8 @@ def test_the_check_of_any_design_is_calibrated() -> None:
 
 
 def test_spread_draws_are_more_even() -> None:
-    # Source: Grafstrom 2012: well spread samples have Voronoi polytopes of about one unit of probability. The
+    # Source, from memory: Grafstrom 2012: well spread samples have Voronoi polytopes of about one unit of
+    # probability. The
     # balance B = mean (v_i - 1)^2 over the samples, v_i the sum of the probabilities nearest to sample i.
     from scipy.spatial import KDTree
 

@@ -32,7 +32,8 @@ def to_kspace(image: np.ndarray) -> np.ndarray:
 def test_the_image_is_the_mean_of_its_copies_at_the_alias_positions(
     pattern: RegularPoints, shape: tuple[int, int], acceleration: int
 ) -> None:
-    # Source: Petersen & Middleton, Inf. Control 5 (1962) 279: sampling on a lattice repeats the transform on
+    # Source, from memory: Petersen & Middleton, Inf. Control 5 (1962) 279: sampling on a lattice repeats the
+    # transform on
     # the reciprocal lattice; Breuer et al., Magn. Reson. Med. 55 (2006) 549, for the shifted lattice of phase
     # encodes.
     grid = Grid(shape)

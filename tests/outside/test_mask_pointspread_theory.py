@@ -82,7 +82,8 @@ def test_regular_lines_make_replicas_at_fov_over_r(lines: int, acceleration: int
 def test_compensated_for_the_density_the_mean_point_spread_is_that_of_full_sampling(
     pattern, grid: Grid, acceleration: float
 ) -> None:
-    # Source: Horvitz & Thompson, J. Am. Stat. Assoc. 47 (1952) 663: weighted by 1 / probability, the sum over
+    # Source, from memory: Horvitz & Thompson, J. Am. Stat. Assoc. 47 (1952) 663: weighted by 1 / probability,
+    # the sum over
     # a sample estimates the sum over all without bias: here that of exp(2 pi i k r / N).
     draws, rng = 4000, np.random.default_rng(33)
     density = pattern.density(grid, acceleration)

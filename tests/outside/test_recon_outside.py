@@ -49,7 +49,7 @@ def test_wavelet_coefficients_are_those_of_pywavelets(wavelet, shape):
     np.testing.assert_allclose(W.inverse(c).reshape(shape), x, atol=1e-9)
 
 
-def dense(A, shape, coils):
+def dense(A, shape):
     """The sensing operator as a matrix, one column an image point."""
     columns = []
     for i in range(int(np.prod(shape))):
@@ -88,7 +88,7 @@ def test_l1_minimiser_is_that_of_the_lasso(solver):
     W = WaveletTransform(shape, "db2", 1, (1, 2), np.complex128)
     problem = Problem(A, A.encode(y), WaveletL1(W, weight))
     solution = solve(problem, solver)
-    F = dense(A, shape, 1) @ np.conj(matrix_of(W, shape)).T
+    F = dense(A, shape) @ np.conj(matrix_of(W, shape)).T
     X, b = (np.concatenate([np.real(a), np.imag(a)]) for a in (F, y.ravel()))
     lasso = Lasso(alpha=weight / len(b), fit_intercept=False, tol=1e-14, max_iter=200000).fit(X, b)
     expected = W.inverse(lasso.coef_.reshape(shape).astype(complex))
@@ -116,7 +116,7 @@ def test_l1_minimum_is_that_of_a_general_convex_solver(coils, penalise_coarsest)
         penalised[W.coarsest] = False
     x = cp.Variable(64, complex=True)
     detail = matrix_of(W, shape)[penalised.ravel()]
-    cost = cp.sum_squares(dense(A, shape, coils) @ x - y.ravel()) / 2 + weight * cp.norm1(detail @ x)
+    cost = cp.sum_squares(dense(A, shape) @ x - y.ravel()) / 2 + weight * cp.norm1(detail @ x)
     minimum = cp.Problem(cp.Minimize(cost)).solve(solver=cp.CLARABEL)
     for solver in (Fista(20000, 1e-9), Admm(20000, 1e-9)):
         solution = solve(problem, solver)

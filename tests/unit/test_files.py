@@ -530,13 +530,19 @@ def test_a_place_that_cannot_be_written_to_is_refused_in_one_line(tmp_path, writ
 
 
 @pytest.mark.parametrize("trouble", [OSError(28, "No space left on device"), KeyboardInterrupt()])
-def test_a_write_that_fails_leaves_what_was_there(tmp_path, monkeypatch, trouble):
+@pytest.mark.parametrize("good", [0, 1])
+def test_a_write_that_fails_leaves_what_was_there(tmp_path, monkeypatch, trouble, good):
+    """A volume has two files: where the second does not fit, the first must not be new."""
     write_volume(tmp_path / "a.nii.gz", small_images(), AFFINE, content="image")
     write_text(tmp_path / "note.txt", "before")
     before = {path.name: path.read_bytes() for path in tmp_path.iterdir()}
 
+    calls = []
+
     def fail(_):
-        raise trouble
+        calls.append(1)
+        if len(calls) > good:
+            raise trouble
 
     monkeypatch.setattr(files.os, "fsync", fail)
     expected = KeyboardInterrupt if isinstance(trouble, KeyboardInterrupt) else InputError
@@ -558,6 +564,50 @@ def test_a_file_appears_only_when_it_is_complete(tmp_path, monkeypatch):
     monkeypatch.setattr(files.Path, "replace", spy)
     write_volume(tmp_path / "a.nii.gz", small_images(), AFFINE, content="image")
     assert seen == [("a.json", []), ("a.nii.gz", ["a.json"])]
+
+
+@pytest.mark.parametrize(
+    ("outputs", "inputs", "message"),
+    [
+        ({"--output": "a.nii"}, ["a.nii"], "--output .*a.nii is one of the inputs"),
+        ({"--output": "a.nii.gz"}, ["a.nii"], "the sidecar of --output .*a.nii.gz is that of .*a.nii;"),
+        ({"--output": "link.nii"}, ["a.nii"], "is one of the inputs"),
+        ({"--output": "sub/../a.nii"}, ["a.nii"], "is one of the inputs"),
+        ({"--output": "b.nii", "--maps": "b.nii"}, [], "--maps .*b.nii is also --output .*b.nii"),
+        ({"--output": "b.nii", "--maps": "b.nii.gz"}, [], "the sidecar of --maps .* is that of --output"),
+        ({"--output": "b.nii", "--table": "b.tsv"}, [], "the sidecar of --table .* is that of --output"),
+        (
+            {"--output": "b.nii", "--maps": "b.img"},
+            [],
+            "--maps .*b.img: expected a name that ends in .nii or",
+        ),
+        ({"--output": "b.nii", "--maps": "no/b.nii"}, [], "cannot be written .No such file or directory"),
+        ({"--output": "b.nii", "--maps": "a.nii/b.nii"}, [], "cannot be written .Not a directory"),
+        ({"--output": "sub"}, [], "expected a name that ends"),
+        ({"--output": "sub/c.nii"}, [], "c.json cannot be written .Is a directory"),
+    ],
+)
+def test_outputs_that_must_not_be_written(tmp_path, outputs, inputs, message):
+    (tmp_path / "sub" / "c.json").mkdir(parents=True)
+    write_anything(tmp_path / "a.nii")
+    (tmp_path / "link.nii").symlink_to(tmp_path / "a.nii")
+    before = sorted(tmp_path.rglob("*"))
+    paths = {option: tmp_path / name for option, name in outputs.items()}
+    with pytest.raises(InputError, match=message):
+        files.check_outputs(paths, [None, *(tmp_path / name for name in inputs)], {"--table": (".tsv",)})
+    assert sorted(tmp_path.rglob("*")) == before
+
+
+def test_outputs_that_may_be_written(tmp_path):
+    write_anything(tmp_path / "a.nii")
+    write_anything(tmp_path / "b.nii")
+    before = sorted(tmp_path.iterdir())
+    files.check_outputs(
+        {"--output": tmp_path / "b.nii", "--maps": None, "--figure": tmp_path / "b.png"},
+        [tmp_path / "a.nii", tmp_path / "a.nii"],
+        {"--figure": (".png",)},
+    )
+    assert sorted(tmp_path.iterdir()) == before
 
 
 def test_files_have_the_usual_permissions(tmp_path):

@@ -151,7 +151,8 @@ def test_shifted_combs_cover_everything_once_in_a_period(
 def test_each_frame_has_the_density_of_the_pattern(
     pattern: VariableDensityLines, grid: Grid, frame: int
 ) -> None:
-    # Source: Madow, Ann. Math. Stat. 20 (1949) 333: systematic sampling keeps inclusion probabilities
+    # Source, from memory: Madow, Ann. Math. Stat. 20 (1949) 333: systematic sampling keeps inclusion
+    # probabilities
     # exactly. A point's count is binomial over independent series; the sum of squares of nearly normal
     # numbers.
     rng, series = np.random.default_rng(63), 1200

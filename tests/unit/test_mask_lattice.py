@@ -1,5 +1,7 @@
 """Regular points: R to the nearest sample, constraints, shape of the lattice, refusals."""
 
+import subprocess
+import sys
 from typing import Any
 
 import numpy as np
@@ -45,6 +47,20 @@ def test_samples_and_constraints(design: tuple[Grid, float], shift: int | None) 
     assert grid.broken(mask) is None
     assert (grid.allowed() | ~mask).all()
     assert mask.tobytes() == pattern.draw(grid, acceleration, np.random.default_rng(2)).tobytes()
+
+
+def test_the_search_of_the_spacing_ends_when_the_first_guess_is_too_wide() -> None:
+    # too few points at the first spacing, 1.038, too many at 1: this once looked at 1 forever. The shutter
+    # and the elliptic region make it so.
+    program = (
+        "import numpy as np; from skipline.masks.grid import Grid; "
+        "from skipline.masks.lattice import RegularPoints; "
+        "grid = Grid((31, 38), 4, 'ellipse', shutter=True); "
+        "mask = RegularPoints().draw(grid, 1.3755611459775836, np.random.default_rng(1)); "
+        "print(mask.sum() - grid.samples(1.3755611459775836))"
+    )
+    done = subprocess.run([sys.executable, "-c", program], capture_output=True, text=True, timeout=60)
+    assert done.stdout.strip() == "0", done.stderr
 
 
 @given(st.integers(1, 5), st.integers(1, 6), st.integers(0, 5), st.integers(1, 6), st.integers(1, 6))

@@ -160,6 +160,18 @@ def test_full_sampling_and_the_calibration_region_alone() -> None:
     assert PoissonDisc().draw(Grid((16, 16)), 256, np.random.default_rng(1)).sum() == 1
 
 
+@pytest.mark.parametrize("aspect", [None, 0.3, 0.75, 0.7, 3.0])
+@pytest.mark.parametrize("growth", [0.0, 1.5, 8.0])
+@pytest.mark.parametrize("shape", [(1, 1), (1, 4), (4, 1), (2, 3)])
+def test_full_sampling_can_be_had_on_every_grid(
+    shape: tuple[int, int], growth: float, aspect: float | None
+) -> None:
+    # the largest radius came out above one step by rounding, for one seed in a few
+    pattern = PoissonDisc(growth=growth, aspect=aspect)
+    for seed in range(40):
+        assert pattern.draw(Grid(shape), 1, np.random.default_rng(seed)).all()
+
+
 PROGRAM = """
 import hashlib, numpy as np
 from skipline.masks.grid import Grid

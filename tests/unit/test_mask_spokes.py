@@ -46,7 +46,7 @@ def test_samples_and_constraints(design: tuple[Grid, float], angle: float, aspec
 
 
 def test_the_golden_angle() -> None:
-    # Source: Winkelmann et al., IEEE Trans. Med. Imaging 26 (2007) 68: 111.246 degrees
+    # Source, from memory: Winkelmann et al., IEEE Trans. Med. Imaging 26 (2007) 68: 111.246 degrees
     assert pytest.approx(111.246, abs=5e-4) == GOLDEN_ANGLE
 
 

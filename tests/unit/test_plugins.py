@@ -82,6 +82,14 @@ def test_an_unknown_name_is_refused_with_the_nearest(kind, name, message):
     assert str(refusal.value) == message
 
 
+@pytest.mark.parametrize("kind", ["method", "Methods", "methds"])
+def test_the_listing_offers_the_nearest_kind(kind):
+    from skipline.recon.listing import print_listing
+
+    with pytest.raises(InputError, match=f'there is no kind "{kind}"; did you mean "methods"'):
+        print_listing(kind)
+
+
 def test_another_package_adds_a_measure(install):
     install("biaspackage", BIAS, {"skipline.measures": {"bias": "biaspackage:BIAS"}})
     assert plugins.measures()[-1] == "bias"

@@ -1,6 +1,5 @@
 """The README is kept true: its commands, its study file, its example."""
 
-import os
 import re
 import subprocess
 import sys
@@ -29,8 +28,10 @@ def test_two_commands_set_themselves_up():
     assert len(commands) == 2
     assert commands[0].endswith("skipline run configs/first-study.toml")
     assert "pytest" in commands[1]
-    if "CI" in os.environ:
-        assert "README.md" in (ROOT / ".ci" / "run").read_text()
+    script = (ROOT / ".ci" / "run").read_text()
+    assert "run configs/first-study.toml" in script
+    assert "README.md" in script.split("\ntests=")[1]
+    assert "\nexport CI=true" in script
 
 
 def test_pictures_and_links_are_there():

@@ -71,18 +71,61 @@ def test_transform_is_unitary_and_centred(shape, seed):
     assert np.isclose(k[centre], x.sum() / np.sqrt(x.size)), "zero frequency sits at N // 2"
 
 
-def test_same_bytes_for_any_number_of_threads():
+@pytest.mark.parametrize("shape", [(67, 71, 83), (1, 513, 517)])
+@pytest.mark.parametrize("coils", [0, 3])
+def test_same_bytes_for_any_number_of_threads(shape, coils):
     rng = np.random.default_rng(0)
-    shape = (128, 64, 48)
-    mask = rng.random((1, 64, 48)) < 0.4
-    maps = complex_normal(rng, 3, *shape).astype(np.complex64)
+    mask = rng.random((1, *shape[1:])) < 0.4
+    maps = complex_normal(rng, coils, *shape).astype(np.complex64) if coils else None
     x = complex_normal(rng, *shape).astype(np.complex64)
-    y = complex_normal(rng, 3, *shape).astype(np.complex64)
+    y = complex_normal(rng, max(coils, 1), *shape).astype(np.complex64)
     results = set()
-    for threads in (1, 2, 3):
+    for threads in (1, 2, 3, 5):
         A = Sensing(mask, shape, maps, team=Team(threads))
-        results.add(A.descend(x, A.encode(y), np.empty_like(x)).tobytes())
+        e = A.encode(y)
+        arrays = (e, A.descend(x, e, np.empty_like(x)), A.normal(x, np.empty_like(x)))
+        results.add(b"".join(array.tobytes() for array in arrays) + repr(A.residual_norm2(x, e)).encode())
     assert len(results) == 1
+
+
+GOOD = np.ones((6, 8, 4), np.complex64)
+
+
+@pytest.mark.parametrize("bad", [np.asfortranarray(GOOD), GOOD.astype(np.complex128), GOOD[:, :4]])
+@pytest.mark.parametrize("maps", [None, np.ones((2, 6, 8, 4), np.complex64)])
+def test_memory_that_the_kernels_must_not_see_is_refused(bad, maps):
+    A = Sensing(np.ones((1, 8, 1), bool), GOOD.shape, maps)
+    e = A.encode(np.ones((A.coils, *GOOD.shape), np.complex64))
+    out = np.empty_like(GOOD)
+    for call in (
+        lambda: A.normal(bad, out),
+        lambda: A.normal(GOOD, bad),
+        lambda: A.descend(bad, e, out),
+        lambda: A.descend(GOOD, e, bad),
+    ):
+        with pytest.raises(InputError, match="C-contiguous complex64"):
+            call()
+
+
+def test_what_the_mask_leaves_out_is_not_read():
+    rng = np.random.default_rng(1)
+    k = complex_normal(rng, 1, 16, 16, 1)
+    mask = np.arange(16)[None, :, None] % 2 == 0
+    dirty = k.copy()
+    dirty[:, :, 1] = np.nan
+    dirty[:, :, 3] = 1e30
+    clean, found = Acquired(k * mask, mask), Acquired(dirty, mask)
+    assert np.array_equal(clean.kspace, found.kspace)
+
+
+def test_any_form_of_the_same_mask_is_the_same():
+    k = np.ones((1, 6, 8, 3), np.complex64)
+    lines = np.arange(8)[None, :, None] % 2 == 0
+    for mask in (lines, np.broadcast_to(lines, (6, 8, 3)), np.broadcast_to(lines, (6, 8, 3)) * np.uint8(255)):
+        data = Acquired(k, mask)
+        assert data.mask.shape == (1, 8, 1)
+        assert data.mask.dtype == bool
+        assert data.acceleration == 2
 
 
 @pytest.mark.parametrize(

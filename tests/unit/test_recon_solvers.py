@@ -8,7 +8,7 @@ from skipline.phantoms import acquire, ring_array, shepp_logan_high_contrast_pha
 from skipline.recon.acquired import Acquired
 from skipline.recon.admm import Admm
 from skipline.recon.fista import Fista
-from skipline.recon.fourier import to_kspace
+from skipline.recon.fourier import to_image, to_kspace
 from skipline.recon.methods.wavelet_sparse import WaveletSparse
 from skipline.recon.methods.zero_filled import ZeroFilled
 from skipline.recon.problem import Problem, solve
@@ -125,6 +125,42 @@ def test_sparse_beats_zero_filled(coils):
             np.linalg.norm(m.reconstruct(data).image - truth) for m in (WaveletSparse(), ZeroFilled())
         )
         assert sparse < 0.9 * zero, acceleration
+
+
+@pytest.mark.parametrize("solver", ["fista", "admm"])
+@pytest.mark.parametrize("factor", [1e-12, 0.1, 10, 1e12])
+def test_the_scale_of_the_coil_maps_does_not_matter(factor, solver):
+    _, data = scan(*SCANS["eight coils"])
+    assert data.maps is not None
+    scaled = Acquired(data.kspace, data.mask, data.maps * np.float32(factor), data.sigma)
+    for method in (WaveletSparse(solver=solver), ZeroFilled()):
+        a, b = method.reconstruct(data).image, method.reconstruct(scaled).image * np.float32(factor)
+        assert np.linalg.norm(b - a) < 1e-4 * np.linalg.norm(a)
+
+
+@pytest.mark.parametrize("solver", ["fista", "admm"])
+def test_slices_of_nothing_converge(solver):
+    _, data = scan(*SCANS["stack"])
+    planes = to_image(data.kspace, (-1,))
+    planes[..., 1] = 0
+    rng = np.random.default_rng(0)
+    noise = 1e-3 * (rng.normal(size=planes.shape[:3]) + 1j * rng.normal(size=planes.shape[:3]))
+    planes[..., 2] = noise * data.mask[..., 0]
+    result = WaveletSparse(solver=solver).reconstruct(
+        Acquired(to_kspace(planes, (-1,)).astype(np.complex64), data.mask, data.maps, data.sigma)
+    )
+    assert result.converged
+    assert not result.image[..., 1].any()
+
+
+def test_a_thin_volume_has_its_wavelets_in_the_plane():
+    """12 slices once left no level at all: the image was only sparse in its voxels."""
+    x, data = scan((64, 64, 12), 0, (1, 2))
+    default, voxels = (
+        np.linalg.norm(method.reconstruct(data).image - x)
+        for method in (WaveletSparse(), WaveletSparse(levels=0))
+    )
+    assert default < 0.8 * voxels
 
 
 def problem_of(data, weight=0.05):

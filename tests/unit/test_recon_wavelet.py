@@ -8,7 +8,7 @@ from skipline.recon.team import Team
 from skipline.recon.wavelet import WaveletTransform
 from skipline.recon.wavelet_filters import orthogonal_wavelets
 from skipline.recon.wavelet_l1 import WaveletL1
-from skipline.recon.wavelet_levels import default_levels
+from skipline.recon.wavelet_levels import axis_levels
 
 WAVELETS = st.sampled_from(["haar", "db2", "db3", "db4", "db7", "sym5", "sym8", "coif1", "coif3", "db20"])
 DTYPES = st.sampled_from([np.complex64, np.complex128, np.float32, np.float64])
@@ -52,12 +52,39 @@ def test_same_bytes_for_any_number_of_threads(shape, axes):
     assert results[0] == results[1] == results[2]
 
 
-def test_default_levels_leave_eight_samples():
-    for n in range(2, 600):
-        levels = default_levels([n])
+def test_default_levels_leave_eight_samples_and_are_at_least_one():
+    for n in range(3, 600):
+        (levels,) = axis_levels(None, [n])
+        assert levels >= 1
         for _ in range(levels):
             n = (n + 1) // 2
-        assert levels == 0 or 8 <= n < 16
+        assert levels == 1 or 8 <= n < 16
+
+
+def test_few_slices_do_not_take_the_levels_of_the_plane():
+    """A volume of 12 slices once had no level at all, and its reconstruction no sparsity."""
+    W = WaveletTransform((64, 48, 12), "db4")
+    assert W.coarsest == (slice(8), slice(12), slice(6))
+    x = random_array((64, 48, 12), np.complex64, 0)
+    assert np.linalg.norm(W.inverse(W.forward(x)) - x) < 1e-5 * np.linalg.norm(x)
+
+
+@pytest.mark.parametrize(
+    "bad",
+    [
+        np.asfortranarray(np.ones((1, 16, 20), np.complex64)),
+        np.ones((1, 16, 20), np.complex128),
+        np.ones((1, 16, 21), np.complex64),
+    ],
+)
+def test_memory_that_the_kernels_must_not_see_is_refused(bad):
+    W = WaveletTransform((1, 16, 20), "db4", 1, (1, 2))
+    good = np.ones((1, 16, 20), np.complex64)
+    for call in (W.forward, W.inverse):
+        with pytest.raises(InputError, match="C-contiguous complex64"):
+            call(bad)
+        with pytest.raises(InputError, match="C-contiguous complex64"):
+            call(good, bad)
 
 
 def test_smooth_signals_are_sparse():

@@ -1,5 +1,7 @@
 import csv
 import json
+import os
+import platform
 import signal
 import subprocess
 import sys
@@ -90,7 +92,11 @@ def test_a_run_and_the_next(study_file, tmp_path):
         }
     table = rows(folder / "cases.csv")
     assert [row["id"] for row in table] == [case.id for case in study.cases()]
-    assert table == rows(folder / "summary.csv") or len(rows(folder / "summary.csv")) == 4
+    summary = rows(folder / "summary.csv")
+    assert [row["nrmse_mean"] for row in summary] == [row["nrmse"] for row in table]
+    assert {row["nrmse_n"] for row in summary} == {"1"}
+    record = json.loads((folder / "cases" / study.cases()[0].id / "case.json").read_text())
+    assert record["machine"].startswith(f"{platform.system()} {platform.machine()}, ")
     verdict = json.loads((folder / "verdict.json").read_text())
     assert verdict == outcome.verdict
     assert verdict["caution"] == CAUTION
@@ -374,3 +380,116 @@ def test_processes_and_ctrl_c(study_file, tmp_path):
         here = evaluate(case, threads=2)
         there = np.asanyarray(nifti(cases / case.id / "image.nii.gz").dataobj)
         np.testing.assert_array_equal(here.image, there)
+
+
+def test_a_file_that_is_overwritten_between_two_runs(study_file, tmp_path):
+    study_file.write_text(STUDY.replace('phantom = "line-pair-slab"\nmatrix = [64, 48]', 'image = "a.nii"'))
+    overrides = ["acquisition.snr=inf", "sampling.acceleration=1", "sampling.calibration=0"]
+    rng = np.random.default_rng(3)
+    old, new = rng.random((2, 16, 16, 1)).astype(np.float32) + 1
+    nib.save(nib.Nifti1Image(old, np.eye(4)), tmp_path / "a.nii")
+    first = load_study(study_file, overrides).cases()[0]
+    np.testing.assert_allclose(prepared_for(first).image, old, atol=1e-5)
+    nib.save(nib.Nifti1Image(new, np.eye(4)), tmp_path / "a.nii")
+    second = load_study(study_file, overrides).cases()[0]
+    assert second.id != first.id
+    np.testing.assert_allclose(prepared_for(second).image, new, atol=1e-5)
+    np.testing.assert_allclose(evaluate(second).image, new, atol=1e-5)
+
+    nib.save(nib.Nifti1Image(old + new, np.eye(4)), tmp_path / "a.nii")
+    third = load_study(study_file, overrides)
+    nib.save(nib.Nifti1Image(old, np.eye(4)), tmp_path / "a.nii")
+    with pytest.raises(InputError, match="have changed since the study was read"):
+        run(third, tmp_path / "results", workers=1, progress=False)
+
+
+def test_maps_that_are_overwritten_between_two_runs(study_file, tmp_path):
+    maps = [np.full((64, 48, 1, 1, coils), 1j, np.complex64) for coils in (2, 3)]
+    found = []
+    for one in maps:
+        nib.save(nib.Nifti1Image(one, np.eye(4)), tmp_path / "maps.nii")
+        case = load_study(study_file, [f"acquisition.maps={tmp_path / 'maps.nii'}"]).cases()[0]
+        found.append((case.settings["coils"], len(prepared_for(case).kspace)))
+    assert found == [(2, 2), (3, 3)]
+
+
+def children(pid):
+    """Return the workers of a process."""
+    listed = subprocess.run(
+        ["ps", "-A", "-ww", "-o", "pid=,ppid=,args="], capture_output=True, text=True
+    ).stdout
+    lines = [line.split(None, 2) for line in listed.splitlines()]
+    return [int(own) for own, parent, args in lines if int(parent) == pid and "spawn_main" in args]
+
+
+KILLED = """
+import os, signal, sys, time
+from skipline.recon.study import load_study, run, runner
+from skipline.recon.study.evaluate import evaluate
+
+def dies(case, threads):
+    # the fatal case always, another one once: as when the system runs out of memory
+    if (case.sampling.acceleration, case.draw) == (4.0, 1) or (case.draw == 2 and not os.path.exists("once")):
+        if case.draw == 2:
+            open("once", "w").close()
+        os.kill(os.getpid(), signal.SIGKILL)
+    return evaluate(case, threads)
+
+runner.evaluate = dies
+
+if __name__ == "__main__":
+    outcome = run(load_study(sys.argv[1], ["sampling.draws=4"]), "results", workers=2, progress=False)
+    print(outcome.done, [(f.case.sampling.acceleration, f.case.draw, f.message) for f in outcome.failed])
+    print(outcome.verdict["sentence"])
+"""
+
+
+def test_a_killed_worker_takes_no_other_case_with_it(study_file, tmp_path):
+    """A case that kills its worker whenever it runs fails; what was beside it, and what follows, is done."""
+    (tmp_path / "script.py").write_text(KILLED)
+    study_file.write_text(STUDY.replace('[[reconstruction]]\nmethod = "wavelet-sparse"\n\n', ""))
+    command = [sys.executable, "script.py", "slab.toml"]
+    done = subprocess.run(command, cwd=tmp_path, capture_output=True, text=True, timeout=90)
+    first, sentence = done.stdout.splitlines()
+    ended = "the worker process ended (killed, or out of memory)"
+    assert first == f"7 {[(4.0, 1, ended)]}", done.stderr
+    assert sentence.startswith("Not decided: 1 of 8 cases failed; R = 2 ")
+    assert not done.stderr
+    assert len(list((tmp_path / "results" / "cases").iterdir())) == 7
+
+
+def test_kill_9_of_a_worker_from_outside(study_file, tmp_path):
+    (tmp_path / "script.py").write_text(SCRIPT)
+    overrides = ["sampling.draws=10", "reference.matrix=[96, 96]"]
+    process = subprocess.Popen(
+        [sys.executable, "script.py", "slab.toml", "results", *overrides],
+        cwd=tmp_path, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
+    )  # fmt: skip
+    cases = tmp_path / "results" / "cases"
+    end = time.monotonic() + 60
+    while time.monotonic() < end and process.poll() is None and len(list(cases.glob("*/case.json"))) < 4:
+        time.sleep(0.01)
+    os.kill(children(process.pid)[0], signal.SIGKILL)
+    stdout, stderr = process.communicate(timeout=90)
+    assert stdout.split() == ["40", "0", "0"], stderr
+    assert not stderr
+    assert len(list(cases.glob("*/case.json"))) == 40
+
+
+@pytest.mark.parametrize("delay", [0.0, 0.1, 0.3])
+def test_ctrl_c_reaches_the_whole_group_while_workers_start(study_file, tmp_path, delay):
+    (tmp_path / "script.py").write_text(SCRIPT)
+    process = subprocess.Popen(
+        [sys.executable, "script.py", "slab.toml", "results", "sampling.draws=10"],
+        cwd=tmp_path, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True, start_new_session=True,
+    )  # fmt: skip
+    end = time.monotonic() + 60
+    while time.monotonic() < end and process.poll() is None and not children(process.pid):
+        time.sleep(0.005)
+    time.sleep(delay)
+    os.killpg(process.pid, signal.SIGINT)
+    _, stderr = process.communicate(timeout=30)
+    assert stderr.startswith("130 stopped; "), stderr
+    assert len(stderr.splitlines()) == 1, "no worker says anything"
+    cases = tmp_path / "results" / "cases"
+    assert len(list(cases.iterdir())) == len(list(cases.glob("*/case.json"))), "only finished cases are left"

@@ -3,7 +3,7 @@ from typing import Annotated
 import pytest
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
-from skipline.recon.study.explain import first_problem, nearest
+from skipline.recon.explain import first_problem, nearest
 from skipline.recon.study.seeds import generator
 from skipline.recon.study.settings import About, Acquisition, Limit, Reference, Sampling
 from skipline.recon.study.sweep import SINGLE, axis, combinations

@@ -2,11 +2,13 @@ import csv
 import io
 import json
 import math
+from collections.abc import Mapping
+from typing import Any
 
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from pydantic import BaseModel
+from pydantic import BaseModel, create_model
 
 from skipline.recon.study.cases import Case
 from skipline.recon.study.settings import Acquisition, Limit, Reference, Sampling
@@ -149,8 +151,12 @@ def test_conditions_have_to_pass_together():
 def test_failed_and_unconverged_cases_are_named():
     rows = [row(2, (0.01, 0.99), converged=False), row(4, (0.02, 0.98)), row(4, None, draw=1)]
     found = verdict(rows)
-    assert found["acceleration"] == 2
+    assert found["acceleration"] is None, "the failed case might have passed"
+    assert found["sentence"].startswith(
+        "Not decided: 1 of 3 cases failed; R = 2 is the highest of those tried"
+    )
     assert "at R = 4 1 case failed" in found["sentence"]
+    assert found["curves"][0]["acceleration"] == 2
     assert found["failed"] == [{"id": rows[2].case.id, "case": str(rows[2].case), "error": "it broke"}]
     assert found["not_converged"][0]["id"] == rows[0].case.id
     assert any(rows[0].case.id in warning for warning in found["warnings"])
@@ -160,6 +166,14 @@ def test_all_failed():
     found = verdict([row(2, None)])
     assert found["acceleration"] is None
     assert found["cases"] == 1
+    assert found["sentence"].startswith("Not decided: 1 of 1 cases failed; no acceleration passes: at R = 2,")
+
+
+def test_a_failure_of_another_choice_leaves_it_open_too():
+    rows = [row(2, (0.01, 0.99)), row(4, (0.01, 0.99)), row(4, None, method="zero")]
+    found = verdict(rows)
+    assert found["acceleration"] is None
+    assert found["sentence"].startswith("Not decided: 1 of 3 cases failed; R = 4 is the highest acceleration")
 
 
 def test_nan_never_passes():
@@ -213,3 +227,41 @@ def test_ids_follow_what_determines_the_result():
     others = [row(3, (0, 1)), row(2, (0, 1), draw=1), row(2, (0, 1), snr=None), row(2, (0, 1), method="zero")]
     assert len({base.id, *(other.case.id for other in others)}) == 5
     assert base.reference_id == others[2].case.reference_id, "noise does not change the reference"
+
+
+NAMES = ["draw", "noise_draw", "method", "acceleration", "coils", "maps", "reference", "pattern", "seed"]
+
+
+def model(options: Mapping[str, Any]) -> BaseModel:
+    fields: dict[str, Any] = {name: (int, value) for name, value in options.items()}
+    return create_model("Options", **fields)()
+
+
+def test_options_of_any_name_overwrite_no_setting():
+    def case(pattern: int, method: int, draw=0, acceleration=2.0):
+        reference = Reference(phantom="slab", matrix=(64, 64))
+        sampling = Sampling(pattern="lines", acceleration=acceleration, phase_encode="y")
+        options = [model(dict.fromkeys(NAMES, value)) for value in (pattern, method)]
+        return Case(7, reference, Acquisition(coils=1), sampling, options[0], "sparse", options[1], draw, 0)
+
+    base = case(0, 0)
+    cases = [base, case(1, 0), case(0, 1), case(0, 0, 1), case(0, 0, acceleration=3.0)]
+    assert len({one.id for one in cases}) == 5
+    assert len({str(one.settings) for one in cases}) == 5
+    assert (base.settings["acceleration"], base.settings["method"], base.settings["coils"]) == (
+        2.0,
+        "sparse",
+        1,
+    )
+    assert len(base.settings) == len(set(base.condition)) + 9 + 4 + 2 * len(NAMES)
+
+
+@pytest.mark.parametrize("name", NAMES)
+def test_one_option_of_such_a_name(name):
+    def case(value):
+        reference = Reference(phantom="slab", matrix=(64, 64))
+        sampling = Sampling(pattern="lines", acceleration=2, phase_encode="y")
+        pattern = model({name: value})
+        return Case(7, reference, Acquisition(coils=1), sampling, pattern, "sparse", Direct(), 0, 0)
+
+    assert case(1).id != case(2).id

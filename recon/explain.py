@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from difflib import get_close_matches
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
-from pydantic import BaseModel, ValidationError
+if TYPE_CHECKING:
+    from pydantic import BaseModel, ValidationError
 
 Problem = tuple[tuple[str | int, ...], str]
 """The way to the key inside its table, and the sentence about it."""
@@ -39,7 +40,7 @@ def first_problem(error: ValidationError, model: type[BaseModel]) -> Problem:
 
     Examples
     --------
-    >>> from pydantic import Field, ConfigDict
+    >>> from pydantic import BaseModel, ConfigDict, Field, ValidationError
     >>> class Sampling(BaseModel):
     ...     model_config = ConfigDict(extra="forbid", strict=True)
     ...     acceleration: float = Field(ge=1)
