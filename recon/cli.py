@@ -333,6 +333,8 @@ def mask(
     if judge is not None:
         if pattern is not None:
             raise InputError(f"--judge judges {judge}; expected no pattern beside it, not {pattern}")
+        if output is not None:
+            raise InputError(f"--judge judges {judge} and writes no mask; expected no --output {output}")
         found, name = read_design(judge), judge.name
     elif pattern is None or output is None or acceleration is None:
         raise InputError("expected a pattern, --output and --acceleration; or --judge FILE")

@@ -401,6 +401,7 @@ def test_masks_that_cannot_be_made(refused, tmp_path):
     assert "expected 3 numbers" in refused(*lines[:3], "64", *lines[4:])
     assert "m.tsv is that of --output" in refused(*lines, "--table", tmp_path / "m.tsv")
     assert "a pattern, --output and --acceleration" in refused("mask")
+    assert "writes no mask" in refused("mask", "--judge", tmp_path / "t.tsv", "--output", tmp_path / "m.nii")
     table = tmp_path / "t.tsv"
     table.write_text("ky\n1\n1\n")
     (tmp_path / "t.json").write_text('{"GridShape": [8]}')
